@@ -1,0 +1,210 @@
+"""The cross-section of a guide as a designer states it.
+
+x runs across the chip, y up, y = 0 at the core's bottom face. The core film is
+``height_um`` thick; beside the rib ``slab_um`` of it is left. Substrate below, cladding
+beside and above; flat layers may lie between, listed from the core outwards.
+"""
+
+from __future__ import annotations
+
+import math
+from dataclasses import dataclass, fields
+
+import materials
+from materials.common.errors import InputError, OutOfRange
+from materials.medium import Medium
+from modesolve.grid import Axis
+from modesolve.layout import Layout
+
+__all__ = ["CrossSection"]
+
+#: Allowed sizes, um.
+SMALLEST_UM, LARGEST_UM = 0.005, 100.0
+
+
+@dataclass(frozen=True, slots=True)
+class CrossSection:
+    """A rectangular or partly etched core in a stack of films.
+
+    Parameters
+    ----------
+    core, cladding, substrate : Medium or str
+        Media, or catalogue keys. ``cladding`` is beside and above the core,
+        ``substrate`` below it.
+    width_um : float
+        Width of the core at the height fraction ``width_at`` of its etched wall.
+    height_um : float
+        Total height of the core film.
+    slab_um : float
+        What is left of the core film beside the rib, 0 <= slab < height.
+    sidewall_deg : float
+        Angle of the etched walls; 90 is vertical.
+    width_at : float
+        Height fraction of the etched wall where ``width_um`` holds: 1 its top, 0 its
+        bottom.
+    layers_below, layers_above : tuple of (medium, thickness_um)
+        Flat films from the core outwards. Those above lie on the plane of the core's
+        top face, with the cladding filling in beside the core.
+    bend_radius_um : float or None
+        Radius of the core's centre line; None for a straight guide.
+    temperature_degc : float or None
+        Temperature of the chip; None leaves every medium at its own table's.
+
+    Raises
+    ------
+    OutOfRange
+        A size outside 0.005 to 100 um, a slab as thick as the core, an angle or
+        fraction outside its range, NaN.
+    InputError
+        A sidewall or a bend that this version does not solve.
+    MissingData
+        A temperature with a medium that has no dn/dT.
+
+    Examples
+    --------
+    >>> section = CrossSection(core="Si3N4-Luke2015", cladding="SiO2-Malitson1965",
+    ...                        substrate="SiO2-Malitson1965", width_um=1.6, height_um=0.8)
+    >>> section.core.key
+    'Si3N4-Luke2015'
+    """
+
+    core: Medium
+    cladding: Medium
+    substrate: Medium
+    width_um: float
+    height_um: float
+    slab_um: float = 0.0
+    sidewall_deg: float = 90.0
+    width_at: float = 1.0
+    layers_below: tuple[tuple[Medium, float], ...] = ()
+    layers_above: tuple[tuple[Medium, float], ...] = ()
+    bend_radius_um: float | None = None
+    temperature_degc: float | None = None
+
+    def __post_init__(self) -> None:
+        put = object.__setattr__
+        for name in ("core", "cladding", "substrate"):
+            put(self, name, _medium(getattr(self, name), name))
+        for name in ("layers_below", "layers_above"):
+            put(self, name, _layers(getattr(self, name), name))
+        for name in ("width_um", "height_um"):
+            put(self, name, _size(getattr(self, name), name))
+        put(self, "slab_um", _number(self.slab_um, "slab_um", "um"))
+        if not 0.0 <= self.slab_um < self.height_um:
+            raise OutOfRange(
+                f"slab_um = {self.slab_um:g} um: allowed 0 up to less than height_um "
+                f"({self.height_um:g} um), the total height of the core film; "
+                "a film without a rib guides no channel mode"
+            )
+        if 0.0 < self.slab_um < SMALLEST_UM or self.height_um - self.slab_um < SMALLEST_UM:
+            raise OutOfRange(
+                f"slab_um = {self.slab_um:g} um: slab and etch depth must each be at least "
+                f"{SMALLEST_UM:g} um (or the slab exactly 0)"
+            )
+        self._check_later_shapes()
+        if self.temperature_degc is not None:
+            put(self, "temperature_degc", _number(self.temperature_degc, "temperature_degc", "degC"))
+
+    def _check_later_shapes(self) -> None:
+        if _number(self.sidewall_deg, "sidewall_deg", "deg") != 90.0:
+            raise InputError(
+                f"sidewall_deg = {self.sidewall_deg:g}: this version solves vertical walls; set it to 90"
+            )
+        if not 0.0 <= _number(self.width_at, "width_at", "") <= 1.0:
+            raise OutOfRange(
+                f"width_at = {self.width_at:g}: allowed 0 (bottom of the etched wall) to 1 (its top)"
+            )
+        if self.bend_radius_um is not None:
+            raise InputError(
+                f"bend_radius_um = {self.bend_radius_um}: this version solves straight guides; "
+                "leave it out"
+            )
+
+    @property
+    def media(self) -> tuple[Medium, ...]:
+        """Every medium in use, once each, core first, at the chip's temperature."""
+        found = {id(medium): medium for medium in self._stated()}
+        return tuple(found.values())
+
+    def layout(self) -> Layout:
+        """Axes and media for the solver: half of the section, mirror plane at x = 0."""
+        media = self.media
+        number = {id(medium): i for i, medium in enumerate(media)}
+        core, cladding = number[id(self.core)], number[id(self.cladding)]
+        rows: list[tuple[int, int]] = [(number[id(self.substrate)],) * 2]
+        walls = [0.0]
+        for medium, thickness in self.layers_below:
+            rows.insert(1, (number[id(medium)],) * 2)
+            walls.insert(0, walls[0] - thickness)
+        if self.slab_um > 0.0:
+            rows.append((core, core))
+            walls.append(self.slab_um)
+        rows.append((core, cladding))
+        walls.append(self.height_um)
+        for medium, thickness in self.layers_above:
+            rows.append((number[id(medium)],) * 2)
+            walls.append(walls[-1] + thickness)
+        rows.append((cladding, cladding))
+        if self.temperature_degc is not None:
+            media = tuple(m.at_temperature(self.temperature_degc) for m in media)
+        return Layout(
+            across=Axis((0.0, 0.5 * self.width_um), low="mirror", high="open"),
+            up=Axis(tuple(walls)),
+            media=media,
+            fill=tuple(tuple(row[i] for row in rows) for i in (0, 1)),
+            core=core,
+            mirror=True,
+        )
+
+    def _stated(self) -> tuple[Medium, ...]:
+        layers = (*self.layers_below, *self.layers_above)
+        return (self.core, self.cladding, self.substrate, *(m for m, _ in layers))
+
+    def describe(self) -> dict[str, object]:
+        """Inputs as plain values, media by key: for headers and provenance."""
+        out: dict[str, object] = {}
+        for f in fields(self):
+            value = getattr(self, f.name)
+            if isinstance(value, Medium):
+                value = value.key
+            elif f.name.startswith("layers"):
+                value = tuple((m.key, t) for m, t in value)
+            out[f.name] = value
+        return out
+
+
+def _medium(value: object, name: str) -> Medium:
+    if isinstance(value, Medium):
+        return value
+    if isinstance(value, str):
+        return materials.load(value)
+    raise InputError(f"{name} = {value!r}: give a medium or a catalogue key")
+
+
+def _layers(value: object, name: str) -> tuple[tuple[Medium, float], ...]:
+    try:
+        pairs = [(medium, thickness) for medium, thickness in value]  # type: ignore[attr-defined]
+    except (TypeError, ValueError) as exc:
+        raise InputError(
+            f"{name} = {value!r}: give (medium, thickness_um) pairs, from the core outwards"
+        ) from exc
+    return tuple((_medium(m, name), _size(t, f"{name} thickness_um")) for m, t in pairs)
+
+
+def _number(value: object, name: str, unit: str) -> float:
+    try:
+        number = float(value)  # type: ignore[arg-type]
+    except (TypeError, ValueError) as exc:
+        raise InputError(f"{name} = {value!r}: give a number {f'in {unit}' if unit else ''}") from exc
+    if not math.isfinite(number):
+        raise OutOfRange(f"{name} = {value}: give a finite number {f'in {unit}' if unit else ''}")
+    return number
+
+
+def _size(value: object, name: str) -> float:
+    number = _number(value, name, "um")
+    if not SMALLEST_UM <= number <= LARGEST_UM:
+        raise OutOfRange(
+            f"{name} = {number:g} um: allowed {SMALLEST_UM:g} to {LARGEST_UM:g} um; check the unit"
+        )
+    return number

@@ -1,0 +1,51 @@
+"""Field of a mode over the whole cross-section, for figures and files."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from materials.common.results import Result, frozen_array, quantity
+from modesolve.integrals import quarter_fields
+from modesolve.jets import Jet
+from modesolve.layout import Layout
+from modesolve.operators import Operators, Walls
+
+__all__ = ["FieldMap", "field_map"]
+
+
+@dataclass(frozen=True, slots=True, eq=False, repr=False)
+class FieldMap(Result):
+    """Electric field on cell centres, scaled so that the largest |E| is 1.
+
+    In a lossless guide the transverse components are real and E_z is imaginary.
+    """
+
+    x_um: np.ndarray = quantity("x", "um", ("x_um",))
+    y_um: np.ndarray = quantity("y", "um", ("y_um",))
+    e_x: np.ndarray = quantity("Ex", "1", ("x_um", "y_um"))
+    e_y: np.ndarray = quantity("Ey", "1", ("x_um", "y_um"))
+    e_z: np.ndarray = quantity("Ez", "1", ("x_um", "y_um"))
+
+
+def field_map(layout: Layout, operators: Operators, jet: Jet, walls: Walls) -> FieldMap:
+    """Field of a mode on its finest grid, unfolded at the mirror plane."""
+    f = quarter_fields(operators, jet)
+    components = [np.mean(part[0], axis=(-2, -1)) for part in (f.e_x, f.e_y, f.e_z)]
+    grid = operators.grid
+    x = 0.25 * (grid.x[1:, 1:] + grid.x[1:, :-1] + grid.x[:-1, 1:] + grid.x[:-1, :-1])[:, 0]
+    y = 0.25 * (grid.y[1:, 1:] + grid.y[1:, :-1] + grid.y[:-1, 1:] + grid.y[:-1, :-1])[0, :]
+    if layout.mirror:
+        # an electric wall leaves the normal component even and the tangential ones odd
+        even = 1.0 if walls.left == "electric" else -1.0
+        signs = (even, -even, -even)
+        components = [
+            np.concatenate([sign * part[::-1], part])
+            for sign, part in zip(signs, components, strict=True)
+        ]
+        x = np.concatenate([-x[::-1], x])
+    scale = np.sqrt(max(np.max(sum(np.abs(part) ** 2 for part in components)), 1e-300))
+    return FieldMap(
+        frozen_array(x), frozen_array(y), *(frozen_array(part / scale) for part in components)
+    )

@@ -1,0 +1,150 @@
+"""Integrals over a mode's fields, as frequency series.
+
+Each is a sum over quarter cells of products of the fields' series, so that areas,
+nonlinear coefficient and mode weights have exact frequency derivatives too. Fields go
+as exp(i(beta z - omega t)); h' is H times the vacuum impedance.
+
+References
+----------
+S. Afshar V. and T. M. Monro, Opt. Express 17, 2298 (2009): full-vector nonlinear
+coefficient. A. W. Snyder and J. D. Love, Optical Waveguide Theory (1983), chapters 11
+and 18: power, and the change of index under a change of medium.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from materials.common import series
+from materials.common.constants import C_UM_PER_PS
+from modesolve.jets import Jet
+from modesolve.layout import Layout
+from modesolve.operators import QUARTER, Operators
+
+__all__ = ["QuarterFields", "mode_series", "quarter_fields"]
+
+#: m^2 in um^2 and 1/(W um) in 1/(W m).
+UM2_PER_M2 = 1e12
+PER_UM_TO_PER_M = 1e6
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class QuarterFields:
+    """Physical field series in the quarter cells, shape (order + 1, n_u, n_v, 2, 2).
+
+    ``y_x``, ``y_y``: the left vector's components; transverse h' is n_eff z x y.
+    ``area``: physical area of each quarter cell, um^2 (no order axis).
+    """
+
+    e_x: np.ndarray
+    e_y: np.ndarray
+    e_z: np.ndarray
+    y_x: np.ndarray
+    y_y: np.ndarray
+    area: np.ndarray
+    arc: np.ndarray
+
+
+def quarter_fields(operators: Operators, jet: Jet) -> QuarterFields:
+    """Physical components from circulations: E = J^-T E_covariant."""
+    topology, metric = operators.topology, operators.grid.metric
+    u_x, u_y, v_x, v_y = metric.inverse
+    e_u, e_v = topology.to_quarters(jet.right)
+    y_u, y_v = topology.to_quarters(jet.left)
+    g = topology.nodes_to_quarters(jet.longitudinal)
+    e_z = series.multiply(-1j * series.reciprocal(jet.beta), g) / metric.arc
+    return QuarterFields(
+        u_x * e_u + v_x * e_v,
+        u_y * e_u + v_y * e_v,
+        e_z,
+        u_x * y_u + v_x * y_v,
+        u_y * y_u + v_y * y_v,
+        QUARTER * metric.det,
+        metric.arc,
+    )
+
+
+def _modulus(a: np.ndarray) -> np.ndarray:
+    """Series of |a|^2 for a real frequency."""
+    return series.multiply(a, np.conj(a)).real
+
+
+def _over_cells(density: np.ndarray) -> np.ndarray:
+    """Sum the four quarters of each cell."""
+    return density.sum(axis=(-2, -1))
+
+
+def _total(density: np.ndarray) -> np.ndarray:
+    return density.sum(axis=(-4, -3, -2, -1))
+
+
+def mode_series(layout: Layout, operators: Operators, jet: Jet) -> dict[str, np.ndarray]:
+    """Every integral of a mode as a frequency series, shape (order + 1,) each.
+
+    Keys
+    ----
+    beta : rad/um
+    te_fraction, core_power_fraction : 1
+    intensity_area_um2 : (int |e|^2)^2 / int |e|^4
+    power_area_um2 : (int Sz)^2 / int Sz^2
+    effective_area_um2 : 2 pi n2_core / (lambda gamma), the core alone where nothing has an n2
+    gamma_per_w_m : k0 int n^2 n2 [2 |e|^4 + |e.e|^2]/3 dA / N^2, NaN where the core has no n2
+    weight_<i> : dn_eff/dn of medium i
+    """
+    f = quarter_fields(operators, jet)
+    order = jet.beta.size - 1
+    halves = 2.0 if layout.mirror else 1.0
+    k0 = series.variable(jet.omega, order) / C_UM_PER_PS
+    n_eff = series.divide(jet.beta, k0)
+    size_x, size_y, size_z = _modulus(f.e_x), _modulus(f.e_y), _modulus(f.e_z)
+    intensity = size_x + size_y + size_z
+    power_density = series.multiply(f.e_x, np.conj(f.y_x)) + series.multiply(f.e_y, np.conj(f.y_y))
+    power_density = series.multiply(np.conj(n_eff), power_density).real
+    power = _total(power_density * f.area)
+    weighted = intensity * f.area * f.arc
+    fourth = series.multiply(intensity, intensity)
+    out = {"beta": jet.beta}
+    transverse = _total((size_x + size_y) * f.area)
+    out["te_fraction"] = series.divide(_total(size_x * f.area), transverse)
+    cells = _over_cells(power_density * f.area)
+    core = operators.medium_of_cell == layout.core
+    out["core_power_fraction"] = series.divide(cells[:, core].sum(axis=-1), power)
+    out["intensity_area_um2"] = halves * _squared_over(
+        _total(intensity * f.area), _total(fourth * f.area)
+    )
+    out["power_area_um2"] = halves * _squared_over(
+        power, _total(series.multiply(power_density, power_density) * f.area)
+    )
+    own = _over_cells(weighted)
+    for i, inside in enumerate(operators.media):
+        weight = series.divide(own[:, inside.inside].sum(axis=-1), power)
+        out[f"weight_{i}"] = series.multiply(series.sqrt(jet.permittivity[i]), weight)
+    out.update(_nonlinear(layout, operators, jet, f, fourth, power, k0, halves))
+    return out
+
+
+def _squared_over(a: np.ndarray, b: np.ndarray) -> np.ndarray:
+    return series.divide(series.multiply(a, a), b)
+
+
+def _nonlinear(layout, operators, jet, f, fourth, power, k0, halves) -> dict[str, np.ndarray]:
+    """gamma and the nonlinear area."""
+    dot = sum(series.multiply(a, a) for a in (f.e_x, f.e_y, f.e_z))
+    density = (2.0 * fourth + _modulus(dot)) / 3.0
+    cells = _over_cells(density * f.area * f.arc)
+    n2 = [medium.n2_m2_per_w for medium in layout.media]
+    core_n2 = n2[layout.core]
+    # only ratios to the core's n2 enter the area; with no n2 at all the core counts alone
+    relative = [(v or 0.0) / core_n2 if core_n2 else float(i == layout.core) for i, v in enumerate(n2)]
+    total = np.zeros(k0.shape)
+    for share, eps, medium in zip(relative, jet.permittivity, operators.media, strict=True):
+        if share:
+            total = total + share * series.multiply(eps, cells[:, medium.inside].sum(axis=-1))
+    inverse_area = series.divide(total, series.multiply(power, power)) / halves
+    gamma = np.full(k0.shape, np.nan)
+    if core_n2:
+        scale = core_n2 * UM2_PER_M2 * PER_UM_TO_PER_M
+        gamma = scale * series.multiply(k0, inverse_area)
+    return {"effective_area_um2": series.reciprocal(inverse_area), "gamma_per_w_m": gamma}

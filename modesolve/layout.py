@@ -1,0 +1,107 @@
+"""A cross-section as the solver sees it: two axes of walls and a medium in every cell between.
+
+``CrossSection`` is what a user states; ``Layout`` is what is solved. A layout also
+serves slabs (one cell wide), closed boxes and the stack beside a core, so all of them
+run through the same grid, operators and ladder.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, replace
+
+import numpy as np
+
+from materials.common.constants import C_UM_PER_PS
+from materials.medium import Medium
+from modesolve.grid import Axis, Grading, Grid, Margins
+from modesolve.operators import Operators, Walls
+
+__all__ = ["Layout"]
+
+
+@dataclass(frozen=True, slots=True)
+class Layout:
+    """Axes, media and walls.
+
+    Parameters
+    ----------
+    across, up : Axis
+        Chains of segments along x and y.
+    media : tuple of Medium
+        The media present, each once.
+    fill : tuple of tuple of int
+        ``fill[i][j]`` is the index into ``media`` of segment i across and j up.
+    core : int
+        Index of the medium that counts as the core.
+    walls : Walls
+        Boundary conditions of the box.
+    mirror : bool
+        True when the low end across is the mirror plane of a symmetric section, so that
+        every integral stands for half the section and both parities are wanted.
+    """
+
+    across: Axis
+    up: Axis
+    media: tuple[Medium, ...]
+    fill: tuple[tuple[int, ...], ...]
+    core: int
+    walls: Walls = Walls()
+    mirror: bool = False
+
+    def grid(self, margins: Margins, refinement: int) -> Grid:
+        """The grid of one refinement."""
+        return Grid.build(self.across, self.up, margins, refinement)
+
+    def operators(self, grid: Grid, walls: Walls) -> Operators:
+        """Matrices on a grid of this layout."""
+        filled = np.array(self.fill)[grid.segment_u[:, None], grid.segment_v[None, :]]
+        return Operators(grid, walls, filled, len(self.media))
+
+    def parities(self) -> tuple[Walls, ...]:
+        """Walls to solve with: both kinds of mirror plane, or the walls as they are."""
+        if not self.mirror:
+            return (self.walls,)
+        return (replace(self.walls, left="electric"), replace(self.walls, left="magnetic"))
+
+    def indices(self, omega: float) -> np.ndarray:
+        """Refractive index of each medium at ``omega`` (rad/ps)."""
+        return np.sqrt(self.permittivity(omega, 0)[:, 0])
+
+    def permittivity(self, omega: float, order: int) -> np.ndarray:
+        """Taylor coefficients of each medium's permittivity, shape (media, order + 1)."""
+        return np.array([m.permittivity_series(omega, order) for m in self.media])
+
+    def open_sides(self) -> tuple[str, ...]:
+        """Sides where the field decays into an outer segment."""
+        ends = {
+            "left": self.across.low,
+            "right": self.across.high,
+            "bottom": self.up.low,
+            "top": self.up.high,
+        }
+        return tuple(side for side, end in ends.items() if end == "open")
+
+    def column(self, index: int) -> Layout:
+        """The stack of column ``index``, uniform across: a slab one cell wide."""
+        across = Axis((0.0, 1.0), "wall", "wall", cells=(1,), grading=Grading(1.0, 1.0, 0.0))
+        return replace(self, across=across, fill=(self.fill[index],), mirror=False)
+
+    def side_background(self, side: str, omega: float) -> float:
+        """Highest index that a field can run away with through an open side.
+
+        Above and below that is the outer medium; to the left and right it is the
+        highest index of the outer media of the stack there, raised by
+        ``modesolve.refine.cutoff_index`` to a slab mode's where the stack guides one.
+        """
+        n = self.indices(omega)
+        if side == "bottom":
+            return max(n[column[0]] for column in self.fill)
+        if side == "top":
+            return max(n[column[-1]] for column in self.fill)
+        stack = self.fill[0 if side == "left" else -1]
+        return max(n[stack[0]], n[stack[-1]])
+
+
+def decay_constant(omega: float, n_eff: float, background: float) -> float:
+    """Decay constant of a field of index ``n_eff`` in a background, 1/um."""
+    return omega / C_UM_PER_PS * float(np.sqrt(max(n_eff**2 - background**2, 0.0)))

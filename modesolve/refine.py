@@ -1,0 +1,462 @@
+"""The ladder of grids: one mode to extrapolated accuracy, with its error bar.
+
+With graded walls every quantity of a mode is a clean series in 1/m^2, m the refinement.
+Neville's scheme on the grids m = 2, 3, 4, 5 takes out its first three terms. The change
+against the same scheme without the coarsest grid bounds the error of the result; the
+effect of the box's outer walls, seen by turning them from electric to magnetic on the
+coarsest grid, and a rounding floor are added.
+
+References
+----------
+L. F. Richardson, Phil. Trans. R. Soc. A 226, 299 (1927): extrapolation to zero cell size.
+J. Stoer and R. Bulirsch, Introduction to Numerical Analysis, section 3.5: Neville's scheme.
+"""
+
+from __future__ import annotations
+
+import time
+from dataclasses import dataclass, replace
+
+import numpy as np
+
+from materials.common import series
+from materials.common.constants import C_UM_PER_PS
+from materials.common.errors import InputError, NoGuidedMode, NotConverged, TooCloseToCutoff
+from modesolve.eigen import RESIDUAL_LIMIT, Pencil, RawMode, nearest_modes
+from modesolve.grid import Grid, Margins
+from modesolve.integrals import mode_series
+from modesolve.jets import Jet, mode_jet
+from modesolve.layout import Layout, decay_constant
+from modesolve.operators import Operators, Walls
+
+__all__ = ["LADDER", "Resolved", "Seed", "SolveReport", "find_seeds", "refine"]
+
+#: Refinements of the default ladder.
+LADDER = (2, 3, 4, 5)
+
+#: Order of the frequency series.
+ORDER = 4
+
+#: Margins in decay lengths of the field, and the widest allowed, um.
+MARGIN_DECAYS = 11.0
+WIDEST_MARGIN_UM = 50.0
+MOST_MARGIN_DECAYS = 30.0
+
+#: Share of the ladder's change that is taken as the error bar, by whether a corner of
+#: the core touches two media or three. Calibrated on the collection of tests/physics.
+BAR_SHARE = 0.5
+
+#: Relative rounding floor of beta; order k of its series is less exact by (4/omega)^k.
+ROUNDING = 2e-12
+
+#: Least overlap of a mode with itself on another grid or at another frequency.
+LEAST_OVERLAP = 0.7
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Seed:
+    """A mode as first seen: enough to find it again on any grid.
+
+    Attributes
+    ----------
+    n_eff : float
+        Estimate of the effective index.
+    walls : Walls
+        The parity it belongs to.
+    fingerprint : ndarray
+        Transverse field on the blocks of the unit grid, normalised.
+    te_fraction : float
+    """
+
+    n_eff: float
+    walls: Walls
+    fingerprint: np.ndarray
+    te_fraction: float
+
+
+@dataclass(frozen=True, slots=True)
+class SolveReport:
+    """What a solve cost and how well it closed."""
+
+    ladder: tuple[int, ...]
+    unknowns: int
+    factorisations: int
+    residual: float
+    jet_residual: float
+    margins: Margins
+    truncation: float
+    seconds: float
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Resolved:
+    """Extrapolated frequency series of a mode with their error bars.
+
+    Attributes
+    ----------
+    omega : float, rad/ps
+    values, companion, bars : dict of str to ndarray, shape (order + 1,)
+        Taylor coefficients; ``companion`` are those without the coarsest grid.
+    variations : ndarray, shape (parameters, order + 1)
+        One-sigma changes of beta by each independent constant of fitted media.
+    seed : Seed
+        With the resolved index, to find the mode again elsewhere.
+    finest : tuple of (Operators, Jet)
+        Fields of the finest grid.
+    """
+
+    omega: float
+    values: dict[str, np.ndarray]
+    companion: dict[str, np.ndarray]
+    bars: dict[str, np.ndarray]
+    variations: np.ndarray
+    seed: Seed
+    finest: tuple[Operators, Jet]
+    report: SolveReport
+
+
+def neville(ladder: tuple[int, ...], values: list[np.ndarray]) -> np.ndarray:
+    """Extrapolate values on grids m to infinite m, as a polynomial in 1/m^2."""
+    steps = [1.0 / m**2 for m in ladder]
+    table = [np.asarray(v) for v in values]
+    for k in range(1, len(table)):
+        for i in range(len(table) - k):
+            weight = steps[i] / (steps[i] - steps[i + k])
+            table[i] = weight * table[i + 1] + (1.0 - weight) * table[i]
+    return table[0]
+
+
+def fingerprint(operators: Operators, right: np.ndarray, refinement: int) -> np.ndarray:
+    """Transverse field averaged over the blocks of the unit grid, unit norm.
+
+    Grids of one layout have the same logical segments, so a block of m x m cells of the
+    grid m covers the same logical square on each of them; a mode is recognised by it.
+    """
+    topology, metric = operators.topology, operators.grid.metric
+    u_x, u_y, v_x, v_y = metric.inverse
+    e_u, e_v = topology.to_quarters(right)
+    area = np.sqrt(np.abs(metric.det))
+    parts = []
+    n_u, n_v = topology.shape
+    rows = _blocks(n_u, refinement)
+    columns = _blocks(n_v, refinement)
+    for component in (u_x * e_u + v_x * e_v, u_y * e_u + v_y * e_v):
+        cells = (component * area).sum(axis=(2, 3))
+        parts.append(np.add.reduceat(np.add.reduceat(cells, rows, axis=0), columns, axis=1))
+    out = np.stack(parts)
+    return out / np.linalg.norm(out)
+
+
+def _blocks(cells: int, refinement: int) -> np.ndarray:
+    return np.arange(0, cells, refinement) if cells >= refinement else np.array([0])
+
+
+def overlap(a: np.ndarray, b: np.ndarray) -> float:
+    """Overlap of two fingerprints, 0 to 1."""
+    return float(abs(np.vdot(a, b)))
+
+
+def cutoff_index(layout: Layout, omega: float) -> float:
+    """Index below which a mode is no longer guided: the highest of every open side.
+
+    Beside the core this is a slab mode's index where the stack there guides one.
+    """
+    return max(_backgrounds(layout, omega).values(), default=0.0)
+
+
+def _backgrounds(layout: Layout, omega: float) -> dict[str, float]:
+    out = {}
+    for side in layout.open_sides():
+        index = layout.side_background(side, omega)
+        if side in ("left", "right"):
+            index = max(index, _stack_index(layout, 0 if side == "left" else -1, omega, index))
+        out[side] = index
+    return out
+
+
+def _stack_index(layout: Layout, column: int, omega: float, background: float) -> float:
+    """Index of the best guided slab mode of a column, or the background's."""
+    n = layout.indices(omega)
+    if max(n[i] for i in layout.fill[column]) <= background:
+        return background
+    stack = layout.column(column)
+    best = background
+    for walls in (Walls(), Walls(left="magnetic", right="magnetic")):
+        polarised = replace(stack, walls=walls)
+        seeds = find_seeds(polarised, omega, 1, background)
+        if seeds:
+            try:
+                resolved = refine(polarised, omega, seeds[0], order=0)
+            except NoGuidedMode:
+                continue
+            best = max(best, float(resolved.values["beta"][0]) * C_UM_PER_PS / omega)
+    return best
+
+
+def margins_for(backgrounds: dict[str, float], omega: float, n_eff: float) -> Margins:
+    """Margins wide enough for the field of index ``n_eff`` to die away.
+
+    Raises
+    ------
+    TooCloseToCutoff
+        When a margin would exceed ``WIDEST_MARGIN_UM``.
+    """
+    out = {}
+    for side, background in backgrounds.items():
+        gamma = decay_constant(omega, n_eff, background)
+        if gamma * WIDEST_MARGIN_UM < MARGIN_DECAYS:
+            raise TooCloseToCutoff(
+                f"index {n_eff:.6f} is too close to cut-off: to the {side} the field decays "
+                f"towards index {background:.6f} over more than "
+                f"{WIDEST_MARGIN_UM / MARGIN_DECAYS:.1f} um; widen or thicken the core, "
+                "or use a shorter wavelength"
+            )
+        out[side] = MARGIN_DECAYS / gamma
+    return Margins(**out)
+
+
+def find_seeds(
+    layout: Layout,
+    omega: float,
+    count: int,
+    cutoff: float,
+    refinement: int = 3,
+    floor: float | None = None,
+) -> list[Seed]:
+    """Candidates for guided modes on one coarse grid, highest index first.
+
+    Modes of the numerical box lie below the cut-off; those within the coarse grid's
+    error below it are kept for the ladder to decide.
+    """
+    indices = layout.indices(omega)
+    top = float(indices.max())
+    if top <= cutoff:
+        return []
+    k0 = omega / C_UM_PER_PS
+    slack = 0.03 * (top - cutoff)
+    reach = cutoff + max(slack, 2e-3)
+    margins = Margins(
+        **{
+            side: min(MARGIN_DECAYS / decay_constant(omega, reach, cutoff), WIDEST_MARGIN_UM)
+            for side in layout.open_sides()
+        }
+    )
+    grid = layout.grid(margins, refinement)
+    permittivity = layout.permittivity(omega, 0)[:, 0]
+    shift = (k0 * top) ** 2
+    seeds = []
+    for walls in layout.parities():
+        operators = layout.operators(grid, walls)
+        pencil = Pencil(operators, k0, permittivity)
+        found = nearest_modes(pencil, pencil.factorise(shift), shift, count + 3)
+        seeds += [_seed(operators, mode, k0, walls, refinement) for mode in found]
+    seeds.sort(key=lambda s: -s.n_eff)
+    return [s for s in seeds if s.n_eff > cutoff - slack]
+
+
+def material_variations(
+    layout: Layout, omega: float, values: dict[str, np.ndarray]
+) -> np.ndarray:
+    """One-sigma series of beta for every independent constant of the fitted media.
+
+    First order: delta beta = k0 sum over media of (dn_eff/dn) delta n, all as series, so
+    that the derivatives of beta vary along.
+    """
+    order = values["beta"].size - 1
+    k0 = series.variable(omega, order) / C_UM_PER_PS
+    rows = []
+    for i, medium in enumerate(layout.media):
+        index = series.sqrt(medium.permittivity_series(omega, order))
+        scale = series.multiply(k0, series.divide(values[f"weight_{i}"], 2.0 * index))
+        for change in medium.variation_series(omega, order):
+            rows.append(series.multiply(scale, change))
+    return np.array(rows).reshape(-1, order + 1)
+
+
+def _seed(
+    operators: Operators, mode: RawMode, k0: float, walls: Walls, refinement: int
+) -> Seed:
+    print_ = fingerprint(operators, mode.right, refinement)
+    share = float(np.sum(np.abs(print_[0]) ** 2))
+    n_eff = float(np.sqrt(max(np.real(mode.eigenvalue), 0.0)) / k0)
+    return Seed(n_eff, walls, print_, share)
+
+
+def _recognise(
+    pencil: Pencil, shift: float, seed: Seed, refinement: int
+) -> tuple[RawMode, object, list[RawMode]]:
+    """The mode of the pencil that looks like the seed, its factorisation, the others."""
+    factorisation = pencil.factorise(shift)
+    for count in (3, 8, 16):
+        found = nearest_modes(pencil, factorisation, shift, count, basis=max(16, 2 * count + 4))
+        marks = [
+            overlap(fingerprint(pencil.operators, mode.right, refinement), seed.fingerprint)
+            for mode in found
+        ]
+        best = int(np.argmax(marks)) if marks else 0
+        if marks and marks[best] >= LEAST_OVERLAP:
+            mode = found.pop(best)
+            return mode, factorisation, found
+    raise NotConverged(
+        f"the mode near index {seed.n_eff:.5f} could not be recognised on the grid "
+        f"m = {refinement} (best overlap {max(marks, default=0.0):.2f}); "
+        "two modes may be crossing here: move the wavelength or the width slightly"
+    )
+
+
+def refine(
+    layout: Layout,
+    omega: float,
+    seed: Seed,
+    ladder: tuple[int, ...] = LADDER,
+    order: int = ORDER,
+) -> Resolved:
+    """Resolve one mode on a ladder of grids.
+
+    Parameters
+    ----------
+    layout : Layout
+    omega : float, rad/ps
+    seed : Seed
+    ladder : tuple of int
+        Refinements, rising, at least three.
+    order : int
+        Order of the frequency series.
+
+    Raises
+    ------
+    TooCloseToCutoff
+        When the field decays too slowly for the margins allowed.
+    NoGuidedMode
+        When the resolved index falls below the cut-off.
+    NotConverged
+        When a residual stays too large or the mode is not recognised.
+    """
+    if len(ladder) < 3 or any(a >= b for a, b in zip(ladder[:-1], ladder[1:], strict=True)):
+        raise InputError(f"ladder = {ladder}: give at least three rising refinements")
+    started = time.perf_counter()
+    climb = _Climb(layout, omega, seed, order)
+    for refinement in ladder:
+        climb.step(refinement)
+    return climb.result(ladder, started)
+
+
+class _Climb:
+    """State of one climb of the ladder."""
+
+    def __init__(self, layout: Layout, omega: float, seed: Seed, order: int) -> None:
+        self.layout = layout
+        self.omega = omega
+        self.k0 = omega / C_UM_PER_PS
+        self.seed = seed
+        self.backgrounds = _backgrounds(layout, omega)
+        self.cutoff = max(self.backgrounds.values(), default=0.0)
+        self.permittivity = layout.permittivity(omega, order)
+        self.margins: Margins | None = None
+        self.levels: list[dict[str, np.ndarray]] = []
+        self.refinements: list[int] = []
+        self.finest: tuple[Operators, Jet] | None = None
+        self.unknowns = self.factorisations = 0
+        self.residual = self.jet_residual = 0.0
+
+    def step(self, refinement: int) -> None:
+        """Solve one more grid; the first one also settles the margins."""
+        if self.margins is None:
+            self._settle(refinement)
+        shift = self._predicted(refinement)
+        self.levels.append(self._solve(refinement, shift, self.seed.walls, keep=True))
+        self.refinements.append(refinement)
+
+    def _settle(self, refinement: int) -> None:
+        """Margins from the decay at the index that the coarsest grid itself gives."""
+        n_eff = max(self.seed.n_eff, self.cutoff + 1.2e-3)
+        for _ in range(2):
+            margins = margins_for(self.backgrounds, self.omega, n_eff)
+            pencil = self._pencil(margins, refinement, self.seed.walls)
+            shift = (self.k0 * n_eff) ** 2 * (1.0 + 1e-4)
+            mode, _, _ = _recognise(pencil, shift, self.seed, refinement)
+            self.factorisations += pencil.factorisations
+            n_eff = float(np.sqrt(max(np.real(mode.eigenvalue), 0.0))) / self.k0
+            if n_eff <= self.cutoff:
+                n_eff = self.cutoff + 1.2e-3
+        self.margins = margins_for(self.backgrounds, self.omega, n_eff)
+        self.seed = _seed(pencil.operators, mode, self.k0, self.seed.walls, refinement)
+
+    def _pencil(self, margins: Margins, refinement: int, walls: Walls) -> Pencil:
+        grid: Grid = self.layout.grid(margins, refinement)
+        operators = self.layout.operators(grid, walls)
+        return Pencil(operators, self.k0, self.permittivity[:, 0])
+
+    def _predicted(self, refinement: int) -> float:
+        """A shift close above the eigenvalue expected on the next grid."""
+        if not self.levels:
+            squared = (self.k0 * self.seed.n_eff) ** 2
+        else:
+            squares = [float(np.real(level["beta"][0])) ** 2 for level in self.levels]
+            squared = squares[-1]
+            if len(squares) > 1:
+                a, b = (1.0 / m**2 for m in self.refinements[-2:])
+                slope = (squares[-1] - squares[-2]) / (b - a)
+                squared = squares[-1] + slope * (1.0 / refinement**2 - b)
+        return squared * (1.0 + 1e-4)
+
+    def _solve(self, refinement: int, shift: float, walls: Walls, keep: bool) -> dict:
+        pencil = self._pencil(self.margins, refinement, walls)
+        mode, factorisation, others = _recognise(pencil, shift, self.seed, refinement)
+        if mode.residual > RESIDUAL_LIMIT:
+            raise NotConverged(
+                f"eigenpair residual {mode.residual:.1e} on the grid m = {refinement} "
+                f"(allowed {RESIDUAL_LIMIT:.0e}); change the wavelength or geometry slightly"
+            )
+        jet = mode_jet(pencil, factorisation, mode, self.omega, self.permittivity, others)
+        self.factorisations += pencil.factorisations
+        self.residual = max(self.residual, mode.residual)
+        self.jet_residual = max(self.jet_residual, jet.residual)
+        if keep:
+            self.unknowns += pencil.matrix.shape[0]
+            self.finest = (pencil.operators, jet)
+        return mode_series(self.layout, pencil.operators, jet)
+
+    def _truncation(self) -> dict[str, np.ndarray]:
+        """Half the change when the outer walls turn from electric to magnetic, m coarsest."""
+        sides = self.layout.open_sides()
+        if not sides:
+            return {key: np.zeros_like(value) for key, value in self.levels[0].items()}
+        walls = replace(self.seed.walls, **dict.fromkeys(sides, "magnetic"))
+        shift = float(np.real(self.levels[0]["beta"][0])) ** 2 * (1.0 + 1e-4)
+        other = self._solve(self.refinements[0], shift, walls, keep=False)
+        return {key: 0.5 * np.abs(other[key] - value) for key, value in self.levels[0].items()}
+
+    def result(self, ladder: tuple[int, ...], started: float) -> Resolved:
+        """Extrapolate, with bars; refuse a mode that is not guided after all."""
+        keys = self.levels[0].keys()
+        values = {k: neville(ladder, [level[k] for level in self.levels]) for k in keys}
+        fine = {k: neville(ladder[1:], [level[k] for level in self.levels[1:]]) for k in keys}
+        n_eff = float(np.real(values["beta"][0])) / self.k0
+        if n_eff <= self.cutoff:
+            raise NoGuidedMode(
+                f"the mode near index {n_eff:.6f} lies below the cut-off {self.cutoff:.6f}"
+            )
+        truncation = self._truncation()
+        bars = {
+            k: BAR_SHARE * np.abs(values[k] - fine[k]) + truncation[k] + self._floor(values[k])
+            for k in keys
+        }
+        report = SolveReport(
+            ladder,
+            self.unknowns,
+            self.factorisations,
+            self.residual,
+            self.jet_residual,
+            self.margins,
+            float(truncation["beta"][0]) / self.k0,
+            time.perf_counter() - started,
+        )
+        seed = replace(self.seed, n_eff=n_eff)
+        variations = material_variations(self.layout, self.omega, values)
+        return Resolved(self.omega, values, fine, bars, variations, seed, self.finest, report)
+
+    def _floor(self, value: np.ndarray) -> np.ndarray:
+        """Rounding: each order of the series loses a factor 4/omega."""
+        scale = (4.0 / self.omega) ** np.arange(value.size)
+        return ROUNDING * abs(value[0]) * scale
