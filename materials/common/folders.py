@@ -1,0 +1,134 @@
+"""An output folder that appears whole or not at all.
+
+Everything is written to a hidden folder beside the target and moved into place by one
+rename. Replacing an older result takes two renames; killed between them, the older
+result is still there under its hidden name, and nothing is lost.
+"""
+
+from __future__ import annotations
+
+import contextlib
+import os
+import secrets
+import shutil
+from collections.abc import Iterator
+from pathlib import Path
+
+from materials.common.errors import StorageError
+
+#: File in which a run lists the files it wrote, so that replacing deletes no others.
+LISTING = "files.txt"
+
+
+def check_target(folder: str | os.PathLike[str], *, replace: bool = False) -> Path:
+    """Refuse an output folder that cannot be used, before any work is done.
+
+    Parameters
+    ----------
+    folder : path
+        The folder to be written. It may be missing or empty.
+    replace : bool
+        Whether a folder that holds something may be replaced.
+
+    Returns
+    -------
+    Path
+        The folder with links resolved.
+
+    Raises
+    ------
+    StorageError
+        It is a file, holds something and ``replace`` is False, is the folder one works
+        in, or its parent cannot be written to.
+    """
+    target = Path(os.path.realpath(folder))
+    if target.exists() and not target.is_dir():
+        raise StorageError(f"{folder} is a file; give the name of a folder")
+    if target.is_dir() and any(target.iterdir()) and not replace:
+        raise StorageError(
+            f"the output folder {folder} is not empty; give another, or --replace to replace it"
+        )
+    here = Path.cwd()
+    if target == here or target in here.parents:
+        raise StorageError(
+            f"the output folder {folder} is the one you are working in; name a folder inside it"
+        )
+    parent = _nearest_folder(target)
+    if not os.access(parent, os.W_OK | os.X_OK):
+        raise StorageError(
+            f"cannot write {folder}: no permission in {parent}; choose another place"
+        )
+    return target
+
+
+def _nearest_folder(target: Path) -> Path:
+    return next(p for p in target.parents if p.is_dir())
+
+
+@contextlib.contextmanager
+def whole_folder(folder: str | os.PathLike[str], *, replace: bool = False) -> Iterator[Path]:
+    """Give a folder to write to; put it in place of ``folder`` on a clean exit.
+
+    With ``replace``, files that an earlier run listed as its own vanish; any other file
+    in the folder is kept, unless a new one has its name.
+
+    Raises
+    ------
+    StorageError
+        As `check_target`, or when the folder cannot be put in place.
+    """
+    target = check_target(folder, replace=replace)
+    staging = target.with_name(f".{target.name}.{secrets.token_hex(4)}.part")
+    try:
+        try:
+            target.parent.mkdir(parents=True, exist_ok=True)
+            staging.mkdir()
+            yield staging
+            _list_files(staging)
+            _put_in_place(staging, target)
+        except StorageError:
+            raise
+        except OSError as exc:
+            raise StorageError(
+                f"cannot write the folder {folder}: {exc.strerror or exc}; check that its parent "
+                "may be written to and that the disk has room"
+            ) from exc
+    finally:
+        shutil.rmtree(staging, ignore_errors=True)
+
+
+def _list_files(staging: Path) -> None:
+    names = sorted(p.relative_to(staging).as_posix() for p in staging.rglob("*") if p.is_file())
+    (staging / LISTING).write_text("\n".join([*names, LISTING]) + "\n", encoding="utf-8")
+
+
+def _put_in_place(staging: Path, target: Path) -> None:
+    older = None
+    if target.is_dir() and any(target.iterdir()):
+        older = target.with_name(f".{target.name}.{secrets.token_hex(4)}.old")
+        os.rename(target, older)
+    try:
+        os.rename(staging, target)
+    except OSError:
+        if older is not None:
+            os.rename(older, target)
+        raise
+    if older is not None:
+        _keep_other_files(older, target)
+        shutil.rmtree(older, ignore_errors=True)
+    descriptor = os.open(target.parent, os.O_RDONLY)
+    try:
+        os.fsync(descriptor)
+    finally:
+        os.close(descriptor)
+
+
+def _keep_other_files(older: Path, target: Path) -> None:
+    """Move what no run wrote from the older folder to the new one."""
+    listing = older / LISTING
+    own = set(listing.read_text(encoding="utf-8").splitlines()) if listing.is_file() else set()
+    for path in sorted(p for p in older.rglob("*") if p.is_file() or p.is_symlink()):
+        name = path.relative_to(older)
+        if name.as_posix() not in own and not (target / name).exists():
+            (target / name).parent.mkdir(parents=True, exist_ok=True)
+            os.rename(path, target / name)

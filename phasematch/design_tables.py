@@ -1,0 +1,191 @@
+"""The tables of a design file: every key with its meaning, unit, range and default.
+
+Declared once here; the checks, the messages, the commented starter file and the resolved
+design all follow from these declarations.
+"""
+
+from __future__ import annotations
+
+from typing import Annotated, Any, Literal
+
+from pydantic import BaseModel, ConfigDict, Field, Strict
+from pydantic.fields import FieldInfo
+
+Number = Annotated[float, Strict()]
+Whole = Annotated[int, Strict()]
+Text = Annotated[str, Strict()]
+
+#: Smallest and largest size of anything in a cross-section, um.
+SIZE_UM = (0.005, 100.0)
+
+
+def number(
+    about: str,
+    unit: str,
+    low: float,
+    high: float,
+    default: Any = ...,
+    *,
+    above: bool = False,
+    below: bool = False,
+) -> Any:
+    """A finite number from ``low`` to ``high``; ``above`` or ``below`` leave an end out."""
+    ends = f"{'above' if above else 'from'} {low:g} {'to below' if below else 'to'} {high:g}"
+    limits = {("gt" if above else "ge"): low, ("lt" if below else "le"): high}
+    return Field(
+        default,
+        description=about,
+        allow_inf_nan=False,
+        json_schema_extra={"allowed": f"a number {ends}{' ' + unit if unit else ''}"},
+        **limits,
+    )
+
+
+def whole(about: str, low: int, high: int, default: Any = ...) -> Any:
+    """A whole number from ``low`` to ``high``."""
+    allowed = f"a whole number from {low} to {high}"
+    return Field(
+        default, description=about, ge=low, le=high, json_schema_extra={"allowed": allowed}
+    )
+
+
+def text(about: str, allowed: str, default: Any = ...) -> Any:
+    """A piece of text; what it may say is checked elsewhere."""
+    return Field(default, description=about, json_schema_extra={"allowed": allowed})
+
+
+_MEDIUM = 'a material key (see "idlermap materials list")'
+_LAYERS = 'pairs [material key, thickness in um], from the core outwards, e.g. [["air", 0.5]]'
+
+
+class Table(BaseModel):
+    """Base of the tables: unknown keys are errors, values are kept as they are."""
+
+    model_config = ConfigDict(extra="forbid", frozen=True)
+
+
+Layer = tuple[Text, Annotated[float, Strict(), Field(ge=SIZE_UM[0], le=SIZE_UM[1])]]
+
+
+class CrossSectionTable(Table):
+    """The guide: films, sizes, walls. Argument names of `modesolve.CrossSection`."""
+
+    core: Text = text("core film", _MEDIUM)
+    cladding: Text = text("beside and above the core", _MEDIUM)
+    substrate: Text = text("below the core", _MEDIUM)
+    width_um: Number = number("core width", "um", *SIZE_UM)
+    height_um: Number = number("total height of the core film", "um", *SIZE_UM)
+    slab_um: Number = number("film left beside the rib; 0 is etched through", "um", 0.0, 100.0, 0.0)
+    sidewall_deg: Number = number(
+        "wall angle: 90 is vertical, less is wider at the bottom", "degrees", 45.0, 90.0, 90.0
+    )
+    width_at: Number = number(
+        "height fraction of the wall where the width holds: 1 top, 0 bottom", "", 0.0, 1.0, 1.0
+    )
+    layers_below: tuple[Layer, ...] = text("flat films below the core", _LAYERS, ())
+    layers_above: tuple[Layer, ...] = text("flat films above the core", _LAYERS, ())
+    bend_radius_um: Number | None = number(
+        "bend radius at the core's centre; leave out for straight", "um", 0.0, 1e7, None, above=True
+    )
+    temperature_degc: Number | None = number(
+        "temperature; leave out for each table's own", "degC", -273.15, 1000.0, None, above=True
+    )
+
+
+class BandTable(Table):
+    """The wavelengths that the dispersion curve spans."""
+
+    from_um: Number = number("shortest wavelength", "um", 0.1, 30.0)
+    to_um: Number = number("longest wavelength", "um", 0.1, 30.0)
+    points: Whole = whole("rows of the dispersion table", 2, 100_000, 201)
+    extrapolate: Annotated[bool, Strict()] = text(
+        "use materials outside their measured range; every result is then marked",
+        "true or false",
+        False,
+    )
+
+
+class ModeTable(Table):
+    """Which mode everything is about, and where the list of modes is made."""
+
+    label: Text = Field(
+        "TE0",
+        pattern=r"^T[EM]\d{1,2}$",
+        description="the mode: TE or TM and its number, by falling n_eff",
+        json_schema_extra={"allowed": 'a mode label such as "TE0" or "TM1"'},
+    )
+    wavelength_um: Number | None = number(
+        "where the modes are listed and labelled; default: the pump, else the middle of the band",
+        "um",
+        0.1,
+        30.0,
+        None,
+    )
+    count: Whole = whole("modes listed, at most", 1, 40, 4)
+
+
+class ChannelTable(Table):
+    """A channel: four-wave mixing along a straight length."""
+
+    length_mm: Number = number("length", "mm", 0.0, 1e6, above=True)
+    loss_db_per_cm: Number = number("propagation loss", "dB/cm", 0.0, 100.0, 0.0)
+    pump_um: Number = number("pump wavelength", "um", 0.1, 30.0)
+    pump_w: Number = number("pump power in the guide", "W", 0.0, 1e4)
+    map_pump_um: tuple[Number, Number] | None = text(
+        "pump axis of the map; default: the pump and 2 % to either side",
+        "two wavelengths [from, to] in um",
+        None,
+    )
+    map_signal_um: tuple[Number, Number] | None = text(
+        "signal axis of the map; default: the whole band", "two wavelengths [from, to] in um", None
+    )
+    map_points: Whole = whole("points along each axis of the map", 2, 2001, 201)
+
+
+class RingTable(Table):
+    """A ring: which resonance pairs around a pump are aligned."""
+
+    radius_um: Number = number("radius at the core's centre", "um", 1.0, 1e6)
+    q_intrinsic: Number = number("quality factor without couplers", "", 1e2, 1e10)
+    q_coupling: Number = number("quality factor of all couplers together", "", 1e2, 1e10)
+    pump_um: Number = number("the pump is the resonance nearest to this", "um", 0.1, 30.0)
+    pump_w: Number = number("pump power in the bus", "W", 0.0, 1e3, 0.0)
+    pairs: Whole = whole("resonance pairs on either side of the pump", 1, 5000, 60)
+    map_pumps: Whole = whole("pump resonances in the detuning map", 1, 2001, 41)
+
+
+class OutputTable(Table):
+    """What is written."""
+
+    figures: Literal["png", "pdf", "svg", "none"] = text(
+        "file format of the figures", '"png", "pdf", "svg" or "none"', "png"
+    )
+    resolution_dpi: Whole = whole("dots per inch of a png", 50, 1200, 300)
+
+
+class DesignTables(Table):
+    """A design file as a whole."""
+
+    cross_section: CrossSectionTable
+    band: BandTable
+    mode: ModeTable = ModeTable.model_validate({})
+    channel: ChannelTable | None = None
+    ring: RingTable | None = None
+    output: OutputTable = OutputTable.model_validate({})
+
+
+#: The tables of a design file by name, in their order.
+TABLES: dict[str, type[Table]] = {
+    "cross_section": CrossSectionTable,
+    "band": BandTable,
+    "mode": ModeTable,
+    "channel": ChannelTable,
+    "ring": RingTable,
+    "output": OutputTable,
+}
+
+
+def allowed(field: FieldInfo) -> str:
+    """What a key may hold, in words."""
+    extra = field.json_schema_extra
+    return str(extra["allowed"]) if isinstance(extra, dict) else ""
