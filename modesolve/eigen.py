@@ -13,7 +13,7 @@ X. S. Li, ACM Trans. Math. Softw. 31, 302 (2005): SuperLU.
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from functools import lru_cache
 
 import numpy as np
@@ -23,7 +23,7 @@ from scipy.sparse.linalg import ArpackError, ArpackNoConvergence, LinearOperator
 from materials.common.errors import NotConverged, SolverError
 from modesolve.operators import Operators, Topology, Walls
 
-__all__ = ["Factorisation", "Pencil", "RawMode", "dissection_order", "nearest_modes"]
+__all__ = ["Factorisation", "Pencil", "RawMode", "dissection_order", "nearest_modes", "polish"]
 
 #: Largest residual of an eigenpair, relative to |beta^2| of the normalised vector.
 RESIDUAL_LIMIT = 1e-8
@@ -97,8 +97,15 @@ class Factorisation:
 
     def solve(self, right: np.ndarray) -> np.ndarray:
         """Solution of the factorised system for one right-hand side."""
+        return self._solve(right, "N")
+
+    def solve_transposed(self, right: np.ndarray) -> np.ndarray:
+        """Solution of the transposed system (no conjugation)."""
+        return self._solve(right, "T")
+
+    def _solve(self, right: np.ndarray, trans: str) -> np.ndarray:
         out = np.empty_like(right, dtype=np.result_type(right, float))
-        out[self._order] = self._lu.solve(np.ascontiguousarray(right[self._order]))
+        out[self._order] = self._lu.solve(np.ascontiguousarray(right[self._order]), trans)
         return out
 
 
@@ -113,7 +120,8 @@ class RawMode:
     right, left : ndarray, shape (edges,)
         e and y, with y^T Mn e = 1.
     residual : float
-        |A e - lambda Mn e| / (|lambda| |Mn e|), recomputed on the original problem.
+        |A e - lambda Mn e| / (|lambda| |Mn e|) in the norm of the inverse diagonal of Mn,
+        recomputed on the original problem.
     """
 
     eigenvalue: complex
@@ -165,16 +173,32 @@ class Pencil:
         # two-sided Rayleigh quotient: its error is the square of the vectors'
         eigenvalue = (left @ (self.matrix @ right)) / (left @ weighted)
         rest = self.matrix @ right - eigenvalue * weighted
-        residual = float(np.linalg.norm(rest) / (abs(eigenvalue) * np.linalg.norm(weighted)))
-        # scale e so that the largest entry is positive and the left product is one
+        # in the norm of Mn^-1, where a grid line close to a wall weighs no more than another
+        scale = np.sqrt(np.abs(self.mass.diagonal()))
+        size = abs(eigenvalue) * np.linalg.norm(weighted / scale)
+        residual = float(np.linalg.norm(rest / scale) / size)
+        # the largest entry of e becomes positive and y^T Mn e one
         product = left @ weighted
-        pivot = right[np.argmax(np.abs(right))]
-        scale = np.sqrt(product + 0j) * (1.0 if (pivot * np.sqrt(product + 0j)).real > 0 else -1.0)
-        if not np.iscomplexobj(right):
-            scale = np.sqrt(abs(product)) * np.sign(pivot)
+        scale = np.sqrt(abs(product) if not np.iscomplexobj(right) else product)
+        if np.real(right[np.argmax(np.abs(right))] / scale) < 0.0:
+            scale = -scale
         right = right / scale
         left = left / product * scale
         return RawMode(eigenvalue, right, left, residual)
+
+
+def polish(pencil: Pencil, factorisation: Factorisation, mode: RawMode) -> RawMode:
+    """Clean an eigenpair of the noise a Krylov basis leaves on the shortest edges.
+
+    That noise is harmless in the eigenvalue and ruinous in the left vector's closed form,
+    which differentiates twice. One inverse-iteration step of each vector damps it by the
+    ratio of the shift's distance to this eigenvalue and to the far end of the spectrum.
+    """
+    right = factorisation.solve(pencil.mass @ mode.right)
+    cleaned = pencil.mode(mode.eigenvalue, right / np.linalg.norm(right))
+    left = factorisation.solve_transposed(pencil.mass.T @ cleaned.left)
+    left = left / (left @ (pencil.mass @ cleaned.right))
+    return replace(cleaned, left=left)
 
 
 def _is_diagonal(matrix: sp.csr_array) -> bool:

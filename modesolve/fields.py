@@ -15,7 +15,7 @@ from modesolve.operators import Operators, Walls
 __all__ = ["FieldMap", "field_map"]
 
 
-@dataclass(frozen=True, slots=True, eq=False, repr=False)
+@dataclass(frozen=True, slots=True, eq=False, repr=False, kw_only=True)
 class FieldMap(Result):
     """Electric field on cell centres, scaled so that the largest |E| is 1.
 
@@ -46,6 +46,5 @@ def field_map(layout: Layout, operators: Operators, jet: Jet, walls: Walls) -> F
         ]
         x = np.concatenate([-x[::-1], x])
     scale = np.sqrt(max(np.max(sum(np.abs(part) ** 2 for part in components)), 1e-300))
-    return FieldMap(
-        frozen_array(x), frozen_array(y), *(frozen_array(part / scale) for part in components)
-    )
+    e_x, e_y, e_z = (frozen_array(part / scale) for part in components)
+    return FieldMap(x_um=frozen_array(x), y_um=frozen_array(y), e_x=e_x, e_y=e_y, e_z=e_z)

@@ -22,12 +22,13 @@ Examples
 from __future__ import annotations
 
 from dataclasses import dataclass, field
+from itertools import pairwise
 from typing import Literal, Protocol
 
 import numpy as np
 from scipy.special import betainc
 
-__all__ = ["Axis", "CoordinateMap", "Grading", "Grid", "Margins", "Metric", "ProductMap"]
+__all__ = ["EVEN", "Axis", "CoordinateMap", "Grading", "Grid", "Margins", "Metric", "ProductMap"]
 
 End = Literal["wall", "mirror", "open"]
 
@@ -42,12 +43,13 @@ class Grading:
     between two walls has twice as many as a half one or an outer one.
     """
 
-    between: float = 3.0
-    outwards: float = 3.0
-    far_share: float = 0.5
+    between: float = 3.5
+    outwards: float = 3.5
+    far_share: float = 0.4
     cells: int = 4
 
 
+#: Equal cells, for closed boxes and comparisons.
 EVEN = Grading(between=1.0, outwards=1.0, far_share=0.0)
 
 
@@ -73,14 +75,15 @@ class Axis:
     low, high : {"wall", "mirror", "open"}
         What lies at the ends: a wall of the box, a mirror plane (no grading towards
         it), or an outer segment as thick as the margin.
-    cells : tuple of int or None
-        Cells a unit of refinement for each inner segment; None for the grading's own.
+    uniform : bool
+        One cell from the first wall to the last whatever the refinement: nothing
+        varies along this axis.
     """
 
     walls: tuple[float, ...]
     low: End = "open"
     high: End = "open"
-    cells: tuple[int, ...] | None = None
+    uniform: bool = False
     grading: Grading = field(default_factory=Grading)
 
     @property
@@ -95,13 +98,11 @@ class Axis:
         if self.low == "open":
             outer = grading.cells * refinement
             out.append(Segment("outer_low", self.walls[0], -low_margin, outer, grading))
-        for i, (a, b) in enumerate(zip(self.walls[:-1], self.walls[1:], strict=True)):
+        for i, (a, b) in enumerate(pairwise(self.walls)):
             mirrored = i == 0 and self.low == "mirror"
-            base = grading.cells if mirrored else 2 * grading.cells
-            if self.cells is not None:
-                base = self.cells[i]
+            cells = (grading.cells if mirrored else 2 * grading.cells) * refinement
             kind = "from_mirror" if mirrored else "inner"
-            out.append(Segment(kind, a, b - a, base * refinement, grading))
+            out.append(Segment(kind, a, b - a, 1 if self.uniform else cells, grading))
         if self.high == "open":
             outer = grading.cells * refinement
             out.append(Segment("outer_high", self.walls[-1], high_margin, outer, grading))

@@ -13,10 +13,14 @@ import numpy as np
 
 from materials.common.constants import C_UM_PER_PS
 from materials.medium import Medium
-from modesolve.grid import Axis, Grading, Grid, Margins
+from modesolve.grid import EVEN, Axis, Grid, Margins
 from modesolve.operators import Operators, Walls
 
-__all__ = ["Layout"]
+__all__ = ["SLAB_WIDTH_UM", "Layout"]
+
+#: Width of the single cell that stands for an infinitely wide slab, um. It is narrow, so
+#: that what varies across it lies far below every cut-off.
+SLAB_WIDTH_UM = 0.01
 
 
 @dataclass(frozen=True, slots=True)
@@ -83,7 +87,7 @@ class Layout:
 
     def column(self, index: int) -> Layout:
         """The stack of column ``index``, uniform across: a slab one cell wide."""
-        across = Axis((0.0, 1.0), "wall", "wall", cells=(1,), grading=Grading(1.0, 1.0, 0.0))
+        across = Axis((0.0, SLAB_WIDTH_UM), "wall", "wall", uniform=True, grading=EVEN)
         return replace(self, across=across, fill=(self.fill[index],), mirror=False)
 
     def side_background(self, side: str, omega: float) -> float:

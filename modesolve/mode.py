@@ -51,7 +51,7 @@ SHORTEST_UM, LONGEST_UM = 0.1, 100.0
 ORDER_SLACK = 0.02
 
 
-@dataclass(frozen=True, slots=True, eq=False, repr=False)
+@dataclass(frozen=True, slots=True, eq=False, repr=False, kw_only=True)
 class Mode(Result):
     """A guided mode with its dispersion, areas and error bars.
 
@@ -243,31 +243,34 @@ def mode_from(
 ) -> Mode:
     """The public result of a resolved mode."""
     wavelength = um_from_omega(resolved.omega)
-    values, bars = _headline(resolved.omega, resolved.values, resolved.bars)
-    spread = np.sqrt((resolved.variations**2).sum(axis=0))
-    if resolved.variations.size:
-        _, more = _headline(resolved.omega, resolved.values, {"beta": spread})
-        bars = {key: bar + more.get(key, 0.0) for key, bar in bars.items()}
-        notes = (*notes, "error bars of n_eff and dispersion include one standard deviation "
-                 "of the fitted material; those of areas and gamma do not")
-    weights = [resolved.values[f"weight_{i}"][0] for i in range(len(layout.media))]
-    weight_bars = [resolved.bars[f"weight_{i}"][0] for i in range(len(layout.media))]
-    group = [m.group_index(wavelength) for m in layout.media]
-    bars["n_group_from_energy"] = float(np.dot(group, weight_bars))
-    bars["index_weight"] = np.array(weight_bars)
-    bars["wavelength_um"] = 0.0
+    names = list(_headline(resolved.omega, resolved.values))
+
+    def headline(values: dict[str, np.ndarray]) -> np.ndarray:
+        return np.array(list(_headline(resolved.omega, values).values()))
+
+    def weights(values: dict[str, np.ndarray]) -> np.ndarray:
+        return np.array([values[f"weight_{i}"][0] for i in range(len(layout.media))])
+
+    value = dict(zip(names, headline(resolved.values).tolist(), strict=True))
+    bars = dict(zip(names, resolved.bar(headline).tolist(), strict=True))
+    group = np.array([m.group_index(wavelength) for m in layout.media])
     return Mode(
         label=label,
         wavelength_um=wavelength,
-        **values,
-        n_group_from_energy=float(np.dot(group, weights)),
+        **value,
+        n_group_from_energy=float(group @ weights(resolved.values)),
         medium=frozen_array([m.key for m in layout.media]),
-        index_weight=frozen_array(weights),
+        index_weight=frozen_array(weights(resolved.values)),
         beta_series=frozen_array(resolved.values["beta"]),
         section=section,
         field_map=field_map(layout, *resolved.finest, resolved.seed.walls),
         report=resolved.report,
-        error=ErrorBars(bars),
+        error=ErrorBars(
+            bars,
+            wavelength_um=0.0,
+            index_weight=resolved.bar(weights),
+            n_group_from_energy=float(resolved.bar(lambda values: group @ weights(values))),
+        ),
         notes=(*notes, *section_notes(layout)),
         provenance=make_provenance(
             [m.key for m in layout.media],
@@ -278,32 +281,20 @@ def mode_from(
     )
 
 
-def _headline(
-    omega: float, values: dict[str, np.ndarray], bars: dict[str, np.ndarray]
-) -> tuple[dict[str, float], dict[str, float]]:
-    """Trade quantities at the centre of the series, and their bars."""
-    wavelength = um_from_omega(omega)
-    k0 = omega / C_UM_PER_PS
-
-    def trade(beta: np.ndarray) -> dict[str, float]:
-        d = series.derivatives(np.real(beta))
-        return {
-            "n_eff": d[0] / k0,
-            "n_group": C_UM_PER_PS * d[1],
-            "beta2_ps2_per_km": PER_UM_TO_PER_KM * d[2],
-            "beta3_ps3_per_km": PER_UM_TO_PER_KM * d[3],
-            "beta4_ps4_per_km": PER_UM_TO_PER_KM * d[4],
-            "dispersion_ps_per_nm_km": dispersion_from_beta2(PER_UM_TO_PER_KM * d[2], wavelength),
-            "loss_db_per_cm": DB_PER_CM_PER_IM_BETA * float(np.imag(beta[0])),
-        }
-
-    value, bar = trade(values["beta"]), trade(bars["beta"])
-    bar["dispersion_ps_per_nm_km"] = abs(bar["dispersion_ps_per_nm_km"])
-    for key in PLAIN:
-        value[key] = float(values[key][0])
-        if key in bars:
-            bar[key] = float(bars[key][0])
-    return ({k: float(v) for k, v in value.items()}, {k: float(v) for k, v in bar.items()})
+def _headline(omega: float, values: dict[str, np.ndarray]) -> dict[str, float]:
+    """Trade quantities at the centre of the series."""
+    d = series.derivatives(np.real(values["beta"]))
+    beta2 = PER_UM_TO_PER_KM * d[2]
+    return {
+        "n_eff": C_UM_PER_PS * d[0] / omega,
+        "n_group": C_UM_PER_PS * d[1],
+        "beta2_ps2_per_km": beta2,
+        "beta3_ps3_per_km": PER_UM_TO_PER_KM * d[3],
+        "beta4_ps4_per_km": PER_UM_TO_PER_KM * d[4],
+        "dispersion_ps_per_nm_km": dispersion_from_beta2(beta2, um_from_omega(omega)),
+        "loss_db_per_cm": DB_PER_CM_PER_IM_BETA * float(np.imag(values["beta"][0])),
+        **{key: float(values[key][0]) for key in PLAIN},
+    }
 
 
 #: Quantities that are taken over as they are.
@@ -326,4 +317,10 @@ def section_notes(layout: Layout) -> tuple[str, ...]:
         notes.append(f"gamma is NaN: {core.key} has no n2; the effective area is the core's alone")
     elif without:
         notes.append(f"no n2 for {', '.join(without)}: counted as zero in gamma and area")
+    fitted = [m.key for m in layout.media if m.fit is not None]
+    if fitted:
+        notes.append(
+            f"error bars of n_eff and dispersion include one standard deviation of the fit of "
+            f"{', '.join(fitted)}; those of areas and gamma do not"
+        )
     return tuple(notes)

@@ -4,7 +4,8 @@ With graded walls every quantity of a mode is a clean series in 1/m^2, m the ref
 Neville's scheme on the grids m = 2, 3, 4, 5 takes out its first three terms. The change
 against the same scheme without the coarsest grid bounds the error of the result; the
 effect of the box's outer walls, seen by turning them from electric to magnetic on the
-coarsest grid, and a rounding floor are added.
+coarsest grid, and a rounding floor are added. These changed versions of a mode are kept
+as alternates, so that the bar of any derived figure follows by computing it from them.
 
 References
 ----------
@@ -15,14 +16,16 @@ J. Stoer and R. Bulirsch, Introduction to Numerical Analysis, section 3.5: Nevil
 from __future__ import annotations
 
 import time
+from collections.abc import Callable
 from dataclasses import dataclass, replace
+from itertools import pairwise
 
 import numpy as np
 
 from materials.common import series
 from materials.common.constants import C_UM_PER_PS
 from materials.common.errors import InputError, NoGuidedMode, NotConverged, TooCloseToCutoff
-from modesolve.eigen import RESIDUAL_LIMIT, Pencil, RawMode, nearest_modes
+from modesolve.eigen import RESIDUAL_LIMIT, Pencil, RawMode, nearest_modes, polish
 from modesolve.grid import Grid, Margins
 from modesolve.integrals import mode_series
 from modesolve.jets import Jet, mode_jet
@@ -89,16 +92,30 @@ class SolveReport:
 
 
 @dataclass(frozen=True, slots=True, eq=False)
+class Alternate:
+    """What a mode's series would be under one change that its error bar stands for.
+
+    The error bar of any figure F derived from a mode, or from a curve of modes, is the sum
+    over its alternates of ``weight`` times |F(alternate) - F|.
+    """
+
+    name: str
+    weight: float
+    values: dict[str, np.ndarray]
+
+
+@dataclass(frozen=True, slots=True, eq=False)
 class Resolved:
     """Extrapolated frequency series of a mode with their error bars.
 
     Attributes
     ----------
     omega : float, rad/ps
-    values, companion, bars : dict of str to ndarray, shape (order + 1,)
-        Taylor coefficients; ``companion`` are those without the coarsest grid.
-    variations : ndarray, shape (parameters, order + 1)
-        One-sigma changes of beta by each independent constant of fitted media.
+    values : dict of str to ndarray, shape (order + 1,)
+        Taylor coefficients of every quantity.
+    alternates : tuple of Alternate
+        The same quantities as they would be without the coarsest grid, with other outer
+        walls, with a fitted medium's constant moved by one standard deviation.
     seed : Seed
         With the resolved index, to find the mode again elsewhere.
     finest : tuple of (Operators, Jet)
@@ -107,12 +124,19 @@ class Resolved:
 
     omega: float
     values: dict[str, np.ndarray]
-    companion: dict[str, np.ndarray]
-    bars: dict[str, np.ndarray]
-    variations: np.ndarray
+    alternates: tuple[Alternate, ...]
     seed: Seed
     finest: tuple[Operators, Jet]
     report: SolveReport
+
+    def bar(self, quantity: Callable[[dict[str, np.ndarray]], np.ndarray]) -> np.ndarray:
+        """Error bar of anything computed from ``values``.
+
+        The sum over the alternates of weight times |quantity(alternate) - quantity(values)|,
+        and the rounding floor where the quantity is a series of its own.
+        """
+        value = quantity(self.values)
+        return sum(a.weight * np.abs(quantity(a.values) - value) for a in self.alternates)
 
 
 def neville(ladder: tuple[int, ...], values: list[np.ndarray]) -> np.ndarray:
@@ -254,23 +278,24 @@ def find_seeds(
     return [s for s in seeds if s.n_eff > cutoff - slack]
 
 
-def material_variations(
+def material_alternates(
     layout: Layout, omega: float, values: dict[str, np.ndarray]
-) -> np.ndarray:
-    """One-sigma series of beta for every independent constant of the fitted media.
+) -> list[Alternate]:
+    """One alternate for every independent constant of a fitted medium, one sigma off.
 
     First order: delta beta = k0 sum over media of (dn_eff/dn) delta n, all as series, so
-    that the derivatives of beta vary along.
+    that the derivatives of beta vary along. The areas are left as they are.
     """
     order = values["beta"].size - 1
     k0 = series.variable(omega, order) / C_UM_PER_PS
-    rows = []
+    out = []
     for i, medium in enumerate(layout.media):
         index = series.sqrt(medium.permittivity_series(omega, order))
         scale = series.multiply(k0, series.divide(values[f"weight_{i}"], 2.0 * index))
-        for change in medium.variation_series(omega, order):
-            rows.append(series.multiply(scale, change))
-    return np.array(rows).reshape(-1, order + 1)
+        for j, change in enumerate(medium.variation_series(omega, order)):
+            moved = {**values, "beta": values["beta"] + series.multiply(scale, change)}
+            out.append(Alternate(f"{medium.key}, constant {j + 1}", 1.0, moved))
+    return out
 
 
 def _seed(
@@ -332,7 +357,7 @@ def refine(
     NotConverged
         When a residual stays too large or the mode is not recognised.
     """
-    if len(ladder) < 3 or any(a >= b for a, b in zip(ladder[:-1], ladder[1:], strict=True)):
+    if len(ladder) < 3 or any(a >= b for a, b in pairwise(ladder)):
         raise InputError(f"ladder = {ladder}: give at least three rising refinements")
     started = time.perf_counter()
     climb = _Climb(layout, omega, seed, order)
@@ -403,6 +428,7 @@ class _Climb:
     def _solve(self, refinement: int, shift: float, walls: Walls, keep: bool) -> dict:
         pencil = self._pencil(self.margins, refinement, walls)
         mode, factorisation, others = _recognise(pencil, shift, self.seed, refinement)
+        mode = polish(pencil, factorisation, mode)
         if mode.residual > RESIDUAL_LIMIT:
             raise NotConverged(
                 f"eigenpair residual {mode.residual:.1e} on the grid m = {refinement} "
@@ -417,15 +443,14 @@ class _Climb:
             self.finest = (pencil.operators, jet)
         return mode_series(self.layout, pencil.operators, jet)
 
-    def _truncation(self) -> dict[str, np.ndarray]:
-        """Half the change when the outer walls turn from electric to magnetic, m coarsest."""
+    def _other_walls(self) -> dict[str, np.ndarray]:
+        """The coarsest level with the outer walls magnetic instead of electric."""
         sides = self.layout.open_sides()
         if not sides:
-            return {key: np.zeros_like(value) for key, value in self.levels[0].items()}
+            return self.levels[0]
         walls = replace(self.seed.walls, **dict.fromkeys(sides, "magnetic"))
         shift = float(np.real(self.levels[0]["beta"][0])) ** 2 * (1.0 + 1e-4)
-        other = self._solve(self.refinements[0], shift, walls, keep=False)
-        return {key: 0.5 * np.abs(other[key] - value) for key, value in self.levels[0].items()}
+        return self._solve(self.refinements[0], shift, walls, keep=False)
 
     def result(self, ladder: tuple[int, ...], started: float) -> Resolved:
         """Extrapolate, with bars; refuse a mode that is not guided after all."""
@@ -437,11 +462,8 @@ class _Climb:
             raise NoGuidedMode(
                 f"the mode near index {n_eff:.6f} lies below the cut-off {self.cutoff:.6f}"
             )
-        truncation = self._truncation()
-        bars = {
-            k: BAR_SHARE * np.abs(values[k] - fine[k]) + truncation[k] + self._floor(values[k])
-            for k in keys
-        }
+        other, coarse = self._other_walls(), self.levels[0]
+        walls = {k: values[k] + other[k] - coarse[k] for k in keys}
         report = SolveReport(
             ladder,
             self.unknowns,
@@ -449,14 +471,21 @@ class _Climb:
             self.residual,
             self.jet_residual,
             self.margins,
-            float(truncation["beta"][0]) / self.k0,
+            0.5 * float(abs(walls["beta"][0] - values["beta"][0])) / self.k0,
             time.perf_counter() - started,
         )
+        alternates = (
+            Alternate("ladder of grids", BAR_SHARE, fine),
+            # the true error of an electric wall is half the step to a magnetic one
+            Alternate("outer walls", 0.5, walls),
+            Alternate("rounding", 1.0, self._rounded(values)),
+            *material_alternates(self.layout, self.omega, values),
+        )
         seed = replace(self.seed, n_eff=n_eff)
-        variations = material_variations(self.layout, self.omega, values)
-        return Resolved(self.omega, values, fine, bars, variations, seed, self.finest, report)
+        return Resolved(self.omega, values, alternates, seed, self.finest, report)
 
-    def _floor(self, value: np.ndarray) -> np.ndarray:
-        """Rounding: each order of the series loses a factor 4/omega."""
-        scale = (4.0 / self.omega) ** np.arange(value.size)
-        return ROUNDING * abs(value[0]) * scale
+    def _rounded(self, values: dict[str, np.ndarray]) -> dict[str, np.ndarray]:
+        """Beta off by its rounding; each order of the series loses a factor 4/omega."""
+        beta = values["beta"]
+        floor = ROUNDING * abs(beta[0]) * (4.0 / self.omega) ** np.arange(beta.size)
+        return {**values, "beta": beta + floor}
