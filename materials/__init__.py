@@ -11,6 +11,7 @@
 """
 
 from materials.catalogue import Entry, Record, catalogue, describe, entries, load
+from materials.measured import from_table
 from materials.medium import Fit, Medium, constant
 
 __all__ = [
@@ -22,5 +23,6 @@ __all__ = [
     "constant",
     "describe",
     "entries",
+    "from_table",
     "load",
 ]
