@@ -68,7 +68,7 @@ def from_table(
     >>> w = np.linspace(1.2, 1.8, 13)
     >>> film = from_table(w, np.sqrt(1 + 2.9 * w**2 / (w**2 - 0.14**2)), name="film")
     >>> print(f"{film.index(1.55):.6f}, {film.fit.terms} resonance")
-    1.980954, 1 resonance
+    1.980872, 1 resonance
     """
     w, n = _checked_points(wavelength_um, index, name)
     deviation = None if sigma is None else _checked_sigma(sigma, w.size, name)
@@ -214,7 +214,8 @@ def _check_wavelengths(w: np.ndarray, name: str) -> None:
     if turn.size:
         row = turn[0]
         raise InputError(
-            f"{name}: wavelengths turn round at row {row + 2} ({w[row]:g}, then {w[row + 1]:g} um); "
+            f"{name}: wavelengths turn round at row {row + 2} ({w[row]:g}, then "
+            f"{w[row + 1]:g} um); "
             "sort the rows by wavelength"
         )
 
