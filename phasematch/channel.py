@@ -1,0 +1,497 @@
+"""A channel of given length and loss: mismatch, gain, conversion and photon pairs.
+
+One undepleted pump, degenerate. Without loss the closed forms are exact for any gain; with
+loss they are those of a weak pump and of equal loss at all three waves, in which the
+pump's own phase shift is left out (an error of order gamma P L). `Channel.validity_notes`
+says when that matters. gamma_j = gamma_p omega_j/omega_p, gamma_p that of the mode at the
+pump.
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Callable
+from dataclasses import dataclass, field, replace
+from typing import Any, NamedTuple
+
+import numpy as np
+
+from materials.common.constants import omega_from_um
+from materials.common.errors import InputError
+from materials.common.results import ErrorBars, frozen_array
+from phasematch import inputs, mixing
+from phasematch.channel_results import ChannelMap, ConversionBand, PairFlux
+from phasematch.conversion import BandEdges, find_band
+from phasematch.mixing import LASER_CAUTION, Curve, error_bar
+from phasematch.pairs import SignalRange, beyond_note, integrate_flux, signal_range
+
+__all__ = ["Channel"]
+
+_DB = 10.0 / math.log(10.0)
+_WEAK = 0.1  # gamma P L above which the weak-pump forms get a note
+
+
+class Waves(NamedTuple):
+    """Frequencies, mismatch and gammas of pump, signal and idler, broadcast together."""
+
+    pump: np.ndarray
+    signal: np.ndarray
+    idler: np.ndarray
+    dbeta_per_m: np.ndarray
+    kappa_per_m: np.ndarray
+    gamma_signal: np.ndarray
+    gamma_idler: np.ndarray
+    pump_w: np.ndarray
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Channel:
+    """A straight (or evenly bent) channel.
+
+    Parameters
+    ----------
+    curve : Curve
+        Dispersion of the mode all waves travel in.
+    length_mm : float
+    loss_db_per_cm : float
+        Propagation loss, the same at all three waves.
+
+    Raises
+    ------
+    OutOfRange
+        For a length that is not positive or a negative loss.
+    """
+
+    curve: Curve
+    length_mm: float = field(kw_only=True)
+    loss_db_per_cm: float = field(kw_only=True, default=0.0)
+
+    def __post_init__(self) -> None:
+        length = inputs.number("length_mm", self.length_mm, "mm")
+        loss = inputs.number("loss_db_per_cm", self.loss_db_per_cm, "dB/cm", least=True)
+        object.__setattr__(self, "length_mm", length)
+        object.__setattr__(self, "loss_db_per_cm", loss)
+
+    @property
+    def length_m(self) -> float:
+        """Length in m."""
+        return self.length_mm * 1e-3
+
+    @property
+    def loss_per_m(self) -> float:
+        """Power loss alpha in 1/m."""
+        return self.loss_db_per_cm * 100.0 / _DB
+
+    @property
+    def effective_length_mm(self) -> float:
+        """(1 - exp(-alpha L))/alpha in mm: the lossless length of equal nonlinear phase."""
+        alpha = self.loss_per_m * 1e-3
+        return self.length_mm if alpha == 0.0 else -math.expm1(-alpha * self.length_mm) / alpha
+
+    def mismatch_per_m(self, pump_um: Any, signal_um: Any, pump_w: Any = 0.0) -> Any:
+        """Phase mismatch kappa = dbeta + 2 gamma P at the input, 1/m.
+
+        Parameters
+        ----------
+        pump_um, signal_um : array_like, um
+        pump_w : array_like, W
+            0 gives the linear mismatch dbeta, also where gamma is not known.
+
+        Returns
+        -------
+        float or ndarray
+            The shape the arguments broadcast to; NaN where a wave leaves the solved band.
+
+        Raises
+        ------
+        OutOfRange
+            For wavelengths that are not positive or powers that are negative or not finite.
+        """
+        return self._waves(pump_um, signal_um, pump_w).kappa_per_m[()]
+
+    def signal_gain(self, pump_um: Any, signal_um: Any, pump_w: Any) -> Any:
+        """Signal power out over signal power in (a ratio, not dB).
+
+        1 + H without loss; with loss exp(-alpha L) plus the idler's photons, weak pump.
+        Parameters and Raises as for `mismatch_per_m`.
+        """
+        waves = self._waves(pump_um, signal_um, pump_w)
+        passed = math.exp(-self.loss_per_m * self.length_m)
+        return (passed + self._photons(waves))[()]
+
+    def idler_efficiency(self, pump_um: Any, signal_um: Any, pump_w: Any) -> Any:
+        """Idler power out over signal power in (a ratio, not dB).
+
+        Parameters and Raises as for `mismatch_per_m`.
+
+        Notes
+        -----
+        Without loss (omega_i/omega_s) H, exact for an undepleted pump. With loss
+
+            (gamma_i P0)^2 exp(-alpha L) |(1 - exp(-(alpha + i dbeta) L))/(alpha + i dbeta)|^2
+
+        which holds for a weak pump, gamma P L well below 1, and equal loss.
+        """
+        waves = self._waves(pump_um, signal_um, pump_w)
+        return (waves.idler / waves.signal * self._photons(waves))[()]
+
+    def low_gain_efficiency(self, pump_um: Any, signal_um: Any, pump_w: Any) -> Any:
+        """Idler power out over signal power in to lowest order in the pump power.
+
+        (gamma_i P L)^2 (sin(dbeta L/2)/(dbeta L/2))^2 without loss, the form of
+        `idler_efficiency` with it. Parameters and Raises as for `mismatch_per_m`.
+        """
+        waves = self._waves(pump_um, signal_um, pump_w)
+        return (waves.idler / waves.signal * self._weak(waves).stimulated)[()]
+
+    def pair_flux_density(
+        self, pump_um: Any, signal_um: Any, pump_w: Any, *, counted: str = "coincidences"
+    ) -> Any:
+        """Spontaneous pairs per second and hertz of signal bandwidth (a pure number).
+
+        Parameters
+        ----------
+        pump_um, signal_um, pump_w : array_like
+            As for `mismatch_per_m`.
+        counted : {"coincidences", "singles"}
+            With loss: pairs of which both photons come out, or photons of one arm. Without
+            loss both are the number of pairs, H.
+
+        Raises
+        ------
+        OutOfRange, InputError
+            As for `mismatch_per_m`; or for another word in ``counted``.
+        """
+        _check_counted(counted)
+        return self._density(self._waves(pump_um, signal_um, pump_w), counted)[()]
+
+    def pair_flux_per_s(
+        self,
+        pump_um: Any,
+        pump_w: Any,
+        *,
+        signal_band_um: tuple[float, float] | None = None,
+        idler_band_um: tuple[float, float] | None = None,
+        counted: str = "coincidences",
+    ) -> Any:
+        """Spontaneous photon pairs per second, exact dispersion; see `pair_flux`.
+
+        ``pump_um`` and ``pump_w`` broadcast; scalars in, a scalar out.
+        """
+        pumps, powers = np.broadcast_arrays(
+            inputs.numbers("pump_um", pump_um, "um"),
+            inputs.numbers("pump_w", pump_w, "W", zero_allowed=True),
+        )
+        _check_counted(counted)
+        out = np.empty(pumps.shape)
+        for index in np.ndindex(pumps.shape):
+            span = self._range(float(pumps[index]), signal_band_um, idler_band_um)
+            out[index] = self._flux(float(pumps[index]), float(powers[index]), span, counted)[0]
+        return out[()]
+
+    def pair_flux(
+        self,
+        pump_um: float,
+        pump_w: float,
+        *,
+        signal_band_um: tuple[float, float] | None = None,
+        idler_band_um: tuple[float, float] | None = None,
+        counted: str = "coincidences",
+    ) -> PairFlux:
+        """Spontaneous photon pairs per second with error bar and reasons.
+
+        Parameters
+        ----------
+        pump_um : float, um
+        pump_w : float, W
+        signal_band_um, idler_band_um : (float, float), optional
+            Pass bands in um, each on one side of the pump. With one given the other photon
+            may go anywhere; with none every signal above the pump's frequency is counted,
+            as far as signal and idler lie in the solved band.
+        counted : {"coincidences", "singles"}
+            See `pair_flux_density`; the result names it.
+
+        Returns
+        -------
+        PairFlux
+            NaN with a reason where the pump or a filter leaves the solved band.
+
+        Raises
+        ------
+        InputError
+            For a filter that holds the pump, or numbers that make no sense.
+        """
+        pump_um = inputs.number("pump_um", pump_um, "um")
+        pump_w = inputs.number("pump_w", pump_w, "W", least=True)
+        _check_counted(counted)
+        span = self._range(pump_um, signal_band_um, idler_band_um)
+        flux, quadrature = self._flux(pump_um, pump_w, span, counted)
+        bar = error_bar(
+            self.curve,
+            lambda c: replace(self, curve=c)._flux(pump_um, pump_w, span, counted)[0],
+        )
+        filters = {"signal_band_um": signal_band_um, "idler_band_um": idler_band_um}
+        notes = self.validity_notes(pump_um, pump_w)
+        if span.empty:
+            notes += ("no pair passes both filters: photon energy is conserved",)
+        if signal_band_um is None and idler_band_um is None and not span.reason:
+            notes += beyond_note(self._spectrum(pump_um, pump_w, counted), span, flux)
+        reason = span.reason or ("" if np.isfinite(flux) else "gamma not known")
+        return PairFlux(
+            pump_um=pump_um,
+            pump_w=pump_w,
+            counted=counted if self.loss_db_per_cm else "pairs",
+            flux_per_s=flux,
+            quadrature_error_per_s=quadrature,
+            low_thz=span.low / (2 * math.pi),
+            high_thz=span.high / (2 * math.pi),
+            reason=reason,
+            error=ErrorBars(flux_per_s=float(bar) + quadrature),
+            inputs={**self._inputs(), **filters},
+            notes=notes,
+            provenance=getattr(self.curve, "provenance", None),
+        )
+
+    def conversion_band(
+        self, pump_um: float, pump_w: float, *, level_db: float = -3.0
+    ) -> ConversionBand:
+        """The signal band in which the idler efficiency stays within ``level_db`` of its peak.
+
+        Parameters
+        ----------
+        pump_um : float, um
+        pump_w : float, W
+            0 gives the band of the low-gain limit (gamma is not needed then).
+        level_db : float
+            Below 0.
+
+        Returns
+        -------
+        ConversionBand
+            About the peak that the efficiency climbs to from the pump; a higher one
+            elsewhere is noted. Edges come from root finding; one that lies outside the
+            solved band is NaN, with the reason.
+
+        Raises
+        ------
+        OutOfRange
+            For numbers that make no sense.
+        """
+        pump_um = inputs.number("pump_um", pump_um, "um")
+        pump_w = inputs.number("pump_w", pump_w, "W", least=True)
+        drop = inputs.number("-level_db", -float(level_db), "dB")
+        edges = self._band(pump_um, pump_w, drop)
+        bars = error_bar(
+            self.curve, lambda c: replace(self, curve=c)._band(pump_um, pump_w, drop).numbers()
+        )
+        values = edges.numbers()
+        names = BandEdges.names
+        return ConversionBand(
+            pump_um=pump_um,
+            pump_w=pump_w,
+            level_db=-drop,
+            **dict(zip(names, values.tolist(), strict=True)),
+            contains_pump=bool(edges.low < omega_from_um(pump_um) < edges.high),
+            reason=edges.reason,
+            error=ErrorBars(dict(zip(names, bars.tolist(), strict=True))),
+            inputs=self._inputs(),
+            notes=self.validity_notes(pump_um, pump_w) + edges.notes,
+            provenance=getattr(self.curve, "provenance", None),
+        )
+
+    def map(self, pump_um: Any, signal_um: Any, pump_w: float) -> ChannelMap:
+        """Mismatch, gain, efficiency and idler for every pump with every signal.
+
+        Parameters
+        ----------
+        pump_um : array_like, shape (pumps,), um
+        signal_um : array_like, shape (signals,), um
+        pump_w : float, W
+
+        Returns
+        -------
+        ChannelMap
+            Arrays of shape (pumps, signals) with error bars; NaN and a reason where a wave
+            leaves the solved band.
+
+        Raises
+        ------
+        OutOfRange, InputError
+            For numbers that make no sense or arrays that are not one-dimensional.
+        """
+        pumps = np.atleast_1d(inputs.numbers("pump_um", pump_um, "um"))
+        signals = np.atleast_1d(inputs.numbers("signal_um", signal_um, "um"))
+        if pumps.ndim != 1 or signals.ndim != 1:
+            raise InputError("pump_um and signal_um of a map must be one-dimensional arrays")
+        pump_w = inputs.number("pump_w", pump_w, "W", least=True)
+
+        def stack(curve: Curve) -> np.ndarray:
+            return replace(self, curve=curve)._stacked(pumps[:, None], signals, pump_w)
+
+        values = stack(self.curve)
+        bars = error_bar(self.curve, stack)
+        waves = self._waves(pumps[:, None], signals, pump_w)
+        names = ("mismatch_per_m", "gain_db", "efficiency_db")
+        arrays = {name: frozen_array(v) for name, v in zip(names, values, strict=True)}
+        return ChannelMap(
+            pump_um=frozen_array(pumps),
+            signal_um=frozen_array(signals),
+            idler_um=frozen_array(mixing.idler_um(pumps[:, None], signals)),
+            **arrays,
+            reason=frozen_array(self._reasons(waves)),
+            pump_w=pump_w,
+            error=ErrorBars(dict(zip(names, bars, strict=True))),
+            inputs=self._inputs(),
+            notes=self.validity_notes(pumps, pump_w),
+            provenance=getattr(self.curve, "provenance", None),
+        )
+
+    def validity_notes(self, pump_um: Any, pump_w: Any) -> tuple[str, ...]:
+        """What to keep in mind about results at this pump: curve, validity, caution."""
+        notes = list(self.curve.notes)
+        power = float(np.max(pump_w))
+        if power == 0.0:
+            return tuple(notes)
+        gamma = mixing.gamma_or_nan(self.curve, pump_um)
+        phase = power * self.effective_length_mm * 1e-3
+        phase *= float(np.max(gamma, initial=0.0, where=np.isfinite(gamma)))
+        if self.loss_db_per_cm and phase > _WEAK:
+            notes.append(
+                f"gamma P L_eff reaches {phase:.2g}: the forms with loss hold for a weak pump, "
+                "well below 1; take the numbers as estimates"
+            )
+        return (*notes, LASER_CAUTION)
+
+    # ------------------------------------------------------------ the work
+
+    def _inputs(self) -> dict[str, Any]:
+        given = {"mode": self.curve.mode, "length_mm": self.length_mm}
+        return {**given, "loss_db_per_cm": self.loss_db_per_cm}
+
+    def _waves(self, pump_um: Any, signal_um: Any, pump_w: Any) -> Waves:
+        pump_um = inputs.numbers("pump_um", pump_um, "um")
+        signal_um = inputs.numbers("signal_um", signal_um, "um")
+        power = inputs.numbers("pump_w", pump_w, "W", zero_allowed=True)
+        gamma = mixing.gamma_or_nan(self.curve, pump_um)
+        return self._at(omega_from_um(pump_um), omega_from_um(signal_um), gamma, power)
+
+    def _at(self, pump: Any, signal: Any, gamma: Any, power: Any) -> Waves:
+        """The waves of given frequencies in rad/ps."""
+        idler = np.asarray(mixing.idler_omega(pump, signal))
+        idler = np.where(idler > 0.0, idler, np.nan)
+        dbeta = mixing.linear_mismatch_per_m(self.curve, pump, signal)
+        gamma = np.where((power == 0.0) & np.isnan(gamma), 0.0, gamma)  # no power: not needed
+        gamma_s = mixing.scaled_gamma(gamma, signal, pump)
+        gamma_i = mixing.scaled_gamma(gamma, idler, pump)
+        kappa = mixing.total_mismatch_per_m(dbeta, gamma_s, gamma_i, gamma, power)
+        return Waves(pump, signal, idler, dbeta, kappa, gamma_s, gamma_i, power)
+
+    def _weak(self, waves: Waves) -> mixing.WeakPhotons:
+        weak = mixing.weak_photons_m2(waves.dbeta_per_m, self.loss_per_m, self.length_m)
+        front = waves.gamma_signal * waves.gamma_idler * np.square(waves.pump_w)
+        return mixing.WeakPhotons(*(front * part for part in weak))
+
+    def _photons(self, waves: Waves) -> np.ndarray:
+        """Idler photons out per signal photon in."""
+        if self.loss_db_per_cm:
+            return self._weak(waves).stimulated
+        return mixing.idler_photons(
+            waves.kappa_per_m, waves.gamma_signal, waves.gamma_idler, waves.pump_w, self.length_m
+        )
+
+    def _log_photons(self, waves: Waves) -> np.ndarray:
+        """Natural logarithm of `_photons`, finite for any gain."""
+        if self.loss_db_per_cm:
+            with np.errstate(divide="ignore"):
+                return np.log(self._weak(waves).stimulated)
+        return mixing.log_idler_photons(
+            waves.kappa_per_m, waves.gamma_signal, waves.gamma_idler, waves.pump_w, self.length_m
+        )
+
+    def _density(self, waves: Waves, counted: str) -> np.ndarray:
+        if not self.loss_db_per_cm:
+            return self._photons(waves)
+        weak = self._weak(waves)
+        return weak.singles if counted == "singles" else weak.coincidences
+
+    def _stacked(self, pump_um: Any, signal_um: Any, pump_w: float) -> np.ndarray:
+        """Mismatch, gain in dB, efficiency in dB, stacked along a first axis."""
+        waves = self._waves(pump_um, signal_um, pump_w)
+        log_photons = self._log_photons(waves)
+        with np.errstate(invalid="ignore"):  # NaN stays NaN
+            gain = _DB * np.logaddexp(-self.loss_per_m * self.length_m, log_photons)
+        efficiency = _DB * (log_photons + np.log(waves.idler / waves.signal))
+        efficiency = np.where(np.isfinite(efficiency), efficiency, np.nan)
+        return np.stack([waves.kappa_per_m, gain, efficiency])
+
+    def _reasons(self, waves: Waves) -> np.ndarray:
+        """Why a point of a map is not there, "" where it is."""
+        shape = waves.dbeta_per_m.shape
+        pump = np.broadcast_to(mixing.inside(self.curve, waves.pump), shape)
+        signal = np.broadcast_to(mixing.inside(self.curve, waves.signal), shape)
+        idler = mixing.inside(self.curve, waves.idler)
+        gamma = np.broadcast_to(np.isfinite(waves.gamma_signal), shape)
+        return np.select(
+            [
+                ~pump,
+                ~signal,
+                np.isnan(waves.idler),
+                ~idler,
+                ~gamma,
+                np.broadcast_to(waves.pump_w == 0.0, shape),
+            ],
+            [
+                "pump outside the solved band",
+                "signal outside the solved band",
+                "no idler: the signal has more than twice the pump's frequency",
+                "idler outside the solved band",
+                "gamma not known",
+                "no pump power: no idler",
+            ],
+            default="",
+        )
+
+    def _spectrum(
+        self, pump_um: float, pump_w: float, counted: str
+    ) -> Callable[[np.ndarray], tuple[np.ndarray, np.ndarray]]:
+        """Density of pairs and phase kappa L/2 against the signal frequency."""
+        pump = float(mixing.snap(self.curve, omega_from_um(pump_um)))
+        gamma = mixing.gamma_or_nan(self.curve, pump_um)
+        power = np.asarray(pump_w)
+
+        def spectrum(signal: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
+            waves = self._at(pump, signal, gamma, power)
+            return self._density(waves, counted), 0.5 * self.length_m * waves.kappa_per_m
+
+        return spectrum
+
+    def _range(self, pump_um: float, signal_band_um: Any, idler_band_um: Any) -> SignalRange:
+        return signal_range(self.curve, omega_from_um(pump_um), signal_band_um, idler_band_um)
+
+    def _flux(
+        self, pump_um: float, pump_w: float, span: SignalRange, counted: str
+    ) -> tuple[float, float]:
+        """Pairs per second over a range of signals, and the quadrature's error estimate."""
+        return integrate_flux(self._spectrum(pump_um, pump_w, counted), span)
+
+    def _band(self, pump_um: float, pump_w: float, drop_db: float) -> BandEdges:
+        gamma = mixing.gamma_or_nan(self.curve, pump_um)
+        pump = float(mixing.snap(self.curve, omega_from_um(pump_um)))
+        power = np.asarray(pump_w)
+
+        def log_efficiency(signal: Any) -> tuple[np.ndarray, np.ndarray]:
+            waves = self._at(pump, np.asarray(signal, dtype=float), gamma, power)
+            if pump_w == 0.0:
+                weak = mixing.weak_photons_m2(waves.dbeta_per_m, self.loss_per_m, self.length_m)
+                with np.errstate(divide="ignore"):
+                    level = np.log(weak.stimulated) + 2.0 * np.log(waves.idler / pump)
+            else:
+                level = self._log_photons(waves) + np.log(waves.idler / waves.signal)
+            return _DB * level, 0.5 * self.length_m * waves.kappa_per_m
+
+        return find_band(self.curve, pump, log_efficiency, drop_db, absolute=pump_w > 0.0)
+
+
+def _check_counted(counted: str) -> None:
+    if counted not in ("coincidences", "singles"):
+        raise InputError(f'counted = {counted!r} is not known; give "coincidences" or "singles"')
