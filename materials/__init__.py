@@ -12,7 +12,8 @@
 
 from materials.catalogue import Entry, Record, catalogue, describe, entries, load
 from materials.measured import from_table
-from materials.medium import Fit, Medium, constant
+from materials.medium import Fit, Medium
+from materials.nondispersive import constant
 
 __all__ = [
     "Entry",

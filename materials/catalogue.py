@@ -10,18 +10,18 @@ end in the fraction, as in ``GeO2-SiO2-Fleming1984-x0.1``.
 from __future__ import annotations
 
 import difflib
-import math
 import re
 import tomllib
 from collections.abc import Mapping
 from dataclasses import dataclass
 from functools import lru_cache
 from importlib import resources
+from importlib.resources.abc import Traversable
 from typing import Any
 
 from materials import formulas, mixtures
 from materials.common.errors import InputError, OutOfRange, UnknownName
-from materials.medium import Medium
+from materials.medium import Fit, Medium
 
 _FAMILY = re.compile(r"(?P<stem>.+-x)(?P<fraction>\d*\.?\d+)")
 
@@ -188,7 +188,7 @@ def entries() -> tuple[Entry, ...]:
 # -- tables ----------------------------------------------------------------------------
 
 
-def _folder():
+def _folder() -> Traversable:
     return resources.files("materials") / "tables"
 
 
@@ -234,7 +234,7 @@ def _entry(key: str, stem: str, fraction: float | None) -> Entry:
     records: dict[str, Any] = {}
     for kind in _KINDS:
         section = table.get(kind, {})
-        records[kind] = tuple(Record(**record) for record in section.get("records", ()))
+        records[kind] = tuple(_record(r) for r in section.get("records", ()))
         records[f"{kind}_choice"] = section.get("choice", "")
         records[f"{kind}_spread"] = section.get("spread", "")
     window = table["points"]["window_um"] if "points" in table else table.get("range_um")
@@ -245,7 +245,7 @@ def _entry(key: str, stem: str, fraction: float | None) -> Entry:
         form=table["form"],
         axis=table.get("axis"),
         range_um=None if window is None else (float(window[0]), float(window[1])),
-        temperature_degc=table.get("temperature_degc"),
+        temperature_degc=_maybe_float(table.get("temperature_degc")),
         citation=table["citation"],
         data_source=table["data_source"],
         note=table.get("note", ""),
@@ -255,7 +255,19 @@ def _entry(key: str, stem: str, fraction: float | None) -> Entry:
     )
 
 
-def _law(table: Mapping[str, Any], fraction: float | None):
+def _maybe_float(value: float | None) -> float | None:
+    return None if value is None else float(value)
+
+
+def _record(fields: Mapping[str, Any]) -> Record:
+    """Record of a table; whole numbers in TOML become floats."""
+    values: dict[str, Any] = {k: float(v) if isinstance(v, int) else v for k, v in fields.items()}
+    return Record(**values)
+
+
+def _law(
+    table: Mapping[str, Any], fraction: float | None
+) -> tuple[str, tuple[float, ...], Fit | None]:
     """Formula, coefficients and fit of a table."""
     if "points" in table:
         from materials import measured  # lazily: fits need scipy.optimize
@@ -288,10 +300,6 @@ def _used(records: tuple[Record, ...]) -> str:
     if not records:
         return ""
     first = records[0]
-    at = (
-        ""
-        if first.wavelength_um is None or math.isnan(first.wavelength_um)
-        else (f", at {first.wavelength_um:g} um")
-    )
+    at = "" if first.wavelength_um is None else f", at {first.wavelength_um:g} um"
     remark = f"; {first.remark}" if first.remark else ""
     return f"{first.citation}{at} [{first.source_kind}]{remark}"

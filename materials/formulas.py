@@ -29,6 +29,7 @@ from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 
 import numpy as np
+from numpy.typing import ArrayLike
 
 from materials.common import series
 from materials.common.constants import C_UM_PER_PS, TWO_PI
@@ -37,7 +38,7 @@ from materials.common.constants import C_UM_PER_PS, TWO_PI
 _HERZBERGER_POLE_UM2 = 0.028
 
 
-def inverse_wavelength(omega_rad_per_ps, order: int) -> np.ndarray:
+def inverse_wavelength(omega_rad_per_ps: ArrayLike, order: int) -> np.ndarray:
     """Series in omega of 1/l, 1/um, shape (order + 1, *omega.shape)."""
     return series.variable(omega_rad_per_ps, order) / (TWO_PI * C_UM_PER_PS)
 

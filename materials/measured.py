@@ -5,10 +5,17 @@ The fit itself is in :mod:`materials.resonance_fit`, imported only when it is ne
 
 from __future__ import annotations
 
+from typing import TYPE_CHECKING
+
 import numpy as np
+from numpy.typing import ArrayLike
 
 from materials.common.errors import InputError, OutOfRange
-from materials.medium import Fit, Medium, _finite
+from materials.medium import Fit, Medium
+from materials.nondispersive import stated_values
+
+if TYPE_CHECKING:
+    from materials.resonance_fit import ResonanceFit
 
 #: Fewest points of a fit, and the wavelengths (um) and indices that are believed.
 _FEWEST_POINTS = 4
@@ -17,11 +24,11 @@ _INDICES = (1.0, 6.0)
 
 
 def from_table(
-    wavelength_um,
-    index,
+    wavelength_um: ArrayLike,
+    index: ArrayLike,
     *,
     name: str = "measured",
-    sigma=None,
+    sigma: ArrayLike | None = None,
     terms: int | None = None,
     n2_m2_per_w: float | None = None,
     dn_dt_per_k: float | None = None,
@@ -77,7 +84,6 @@ def from_table(
         w, n = w[::-1], n[::-1]
         deviation = None if deviation is None else deviation[::-1]
     formula, coefficients, fit, caveats = _fit(w, n, deviation, terms)
-    given = {"n2": n2_m2_per_w, "dn/dT": dn_dt_per_k}
     residual = f"residual {fit.residual_rms:.1e} rms, {fit.residual_max:.1e} at most"
     return Medium(
         key=name,
@@ -87,17 +93,15 @@ def from_table(
         coefficients=coefficients,
         range_um=fit.window_um,
         citation="points given by the user",
-        n2_m2_per_w=None if n2_m2_per_w is None else _finite(n2_m2_per_w, "n2_m2_per_w"),
-        n2_citation="" if n2_m2_per_w is None else "given by the user",
-        dn_dt_per_k=None if dn_dt_per_k is None else _finite(dn_dt_per_k, "dn_dt_per_k"),
-        dn_dt_citation="" if dn_dt_per_k is None else "given by the user",
         caveats=(f"index fitted to {fit.points} points ({residual})", *caveats),
-        missing=tuple(what for what, value in given.items() if value is None),
         fit=fit,
+        **stated_values(n2_m2_per_w, dn_dt_per_k),
     )
 
 
-def fit_window(wavelength_um, index, window_um, terms: int):
+def fit_window(
+    wavelength_um: ArrayLike, index: ArrayLike, window_um: tuple[float, float], terms: int
+) -> tuple[str, tuple[float, ...], Fit]:
     """Formula, coefficients and :class:`Fit` of the points inside a window (for tables)."""
     w, n = np.asarray(wavelength_um, dtype=float), np.asarray(index, dtype=float)
     inside = (w >= window_um[0]) & (w <= window_um[1])
@@ -105,7 +109,9 @@ def fit_window(wavelength_um, index, window_um, terms: int):
     return formula, coefficients, fit
 
 
-def _fit(w: np.ndarray, n: np.ndarray, sigma: np.ndarray | None, terms: int | None):
+def _fit(
+    w: np.ndarray, n: np.ndarray, sigma: np.ndarray | None, terms: int | None
+) -> tuple[str, tuple[float, ...], Fit, tuple[str, ...]]:
     """Formula, coefficients, Fit and caveats of points in rising order."""
     from materials import resonance_fit  # lazily: scipy.optimize is slow to import
 
@@ -127,7 +133,7 @@ def _fit(w: np.ndarray, n: np.ndarray, sigma: np.ndarray | None, terms: int | No
     return "fitted_resonances", tuple(float(c) for c in best.coefficients), fit, caveats
 
 
-def _error_scale(best, sigma_given: bool) -> tuple[float, tuple[str, ...]]:
+def _error_scale(best: ResonanceFit, sigma_given: bool) -> tuple[float, tuple[str, ...]]:
     """Factor on the covariance root, and what there is to say about it.
 
     Residuals that follow each other (lag-one correlation r) carry fewer independent
@@ -160,7 +166,7 @@ def _neighbour_correlation(residual: np.ndarray) -> float:
 # -- checks ----------------------------------------------------------------------------
 
 
-def _numbers(values, what: str, name: str) -> np.ndarray:
+def _numbers(values: ArrayLike, what: str, name: str) -> np.ndarray:
     try:
         array = np.asarray(values, dtype=float)
     except (TypeError, ValueError) as exc:
@@ -175,7 +181,9 @@ def _numbers(values, what: str, name: str) -> np.ndarray:
     return array
 
 
-def _checked_points(wavelength_um, index, name: str) -> tuple[np.ndarray, np.ndarray]:
+def _checked_points(
+    wavelength_um: ArrayLike, index: ArrayLike, name: str
+) -> tuple[np.ndarray, np.ndarray]:
     w = _numbers(wavelength_um, "wavelength_um", name)
     n = _numbers(index, "index", name)
     if w.size != n.size:
@@ -229,9 +237,8 @@ def _unit_guess(w: np.ndarray) -> str:
     return "; give vacuum wavelengths in um"
 
 
-def _checked_sigma(sigma, points: int, name: str) -> np.ndarray:
-    value = np.asarray(sigma, dtype=float) if np.ndim(sigma) == 0 else None
-    array = np.full(points, value) if value is not None else _numbers(sigma, "sigma", name)
+def _checked_sigma(sigma: ArrayLike, points: int, name: str) -> np.ndarray:
+    array = _numbers(np.full(points, sigma) if np.ndim(sigma) == 0 else sigma, "sigma", name)
     if array.size != points:
         raise InputError(f"{name}: {array.size} values of sigma for {points} points")
     if not np.all(np.isfinite(array) & (array > 0.0)):

@@ -10,8 +10,10 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass, field, replace
+from typing import Any
 
 import numpy as np
+from numpy.typing import ArrayLike
 
 from materials import formulas
 from materials.common import series
@@ -21,7 +23,7 @@ from materials.common.constants import (
     omega_from_um,
     um_from_omega,
 )
-from materials.common.errors import InputError, MissingData, OutOfRange, OutsideMaterialRange
+from materials.common.errors import InputError, MissingData, OutsideMaterialRange
 
 #: Taken where a table states no temperature, degC.
 ROOM_TEMPERATURE_DEGC = 20.0
@@ -128,7 +130,7 @@ class Medium:
 
     # -- dispersion at a wavelength ------------------------------------------------
 
-    def index(self, wavelength_um):
+    def index(self, wavelength_um: ArrayLike) -> Any:
         """Refractive index.
 
         Parameters
@@ -149,11 +151,11 @@ class Medium:
         """
         return _plain(self._index_about(wavelength_um, 0)[0])
 
-    def group_index(self, wavelength_um):
+    def group_index(self, wavelength_um: ArrayLike) -> Any:
         """Group index n - l dn/dl; arguments and errors as for :meth:`index`."""
         return _plain(C_UM_PER_PS * self._beta_about(wavelength_um, 1)[1])
 
-    def beta2_ps2_per_km(self, wavelength_um):
+    def beta2_ps2_per_km(self, wavelength_um: ArrayLike) -> Any:
         """Second derivative of n omega/c by omega; arguments and errors as :meth:`index`."""
         return _plain(2.0 * PER_UM_TO_PER_KM * self._beta_about(wavelength_um, 2)[2])
 
@@ -177,7 +179,9 @@ class Medium:
 
     # -- series in frequency -------------------------------------------------------
 
-    def permittivity_series(self, omega_rad_per_ps, order: int, temperature_degc=None):
+    def permittivity_series(
+        self, omega_rad_per_ps: ArrayLike, order: int, temperature_degc: float | None = None
+    ) -> np.ndarray:
         """Taylor coefficients of eps_r = n**2 in omega (1/k! included).
 
         Parameters
@@ -211,7 +215,9 @@ class Medium:
         n = self.index_series(omega, order)
         return series.multiply(n, n)
 
-    def index_series(self, omega_rad_per_ps, order: int, temperature_degc=None):
+    def index_series(
+        self, omega_rad_per_ps: ArrayLike, order: int, temperature_degc: float | None = None
+    ) -> np.ndarray:
         """Taylor coefficients of n in omega; as :meth:`permittivity_series`."""
         if temperature_degc is not None:
             warmed = self.at_temperature(temperature_degc)
@@ -228,7 +234,7 @@ class Medium:
         n[0] += self.index_shift
         return n
 
-    def variation_series(self, omega_rad_per_ps, order: int) -> np.ndarray:
+    def variation_series(self, omega_rad_per_ps: ArrayLike, order: int) -> np.ndarray:
         """One-sigma variations of eps_r that the fit of the points leaves open.
 
         Returns
@@ -301,15 +307,15 @@ class Medium:
             return "any wavelength"
         return f"{self.range_um[0]:g}-{self.range_um[1]:g} um"
 
-    def _index_about(self, wavelength_um, order: int) -> np.ndarray:
+    def _index_about(self, wavelength_um: ArrayLike, order: int) -> np.ndarray:
         return self.index_series(omega_from_um(_positive(wavelength_um, "wavelength", "um")), order)
 
-    def _beta_about(self, wavelength_um, order: int) -> np.ndarray:
+    def _beta_about(self, wavelength_um: ArrayLike, order: int) -> np.ndarray:
         omega = omega_from_um(_positive(wavelength_um, "wavelength", "um"))
         n = self.index_series(omega, order)
         return series.multiply(series.variable(omega, order), n) / C_UM_PER_PS
 
-    def _checked_omega(self, omega_rad_per_ps) -> np.ndarray:
+    def _checked_omega(self, omega_rad_per_ps: ArrayLike) -> np.ndarray:
         omega = _positive(omega_rad_per_ps, "frequency", "rad/ps")
         if self.range_um is None or self.extrapolate or omega.size == 0:
             return omega
@@ -338,7 +344,7 @@ class Medium:
             )
 
 
-def _positive(value, what: str, unit: str) -> np.ndarray:
+def _positive(value: ArrayLike, what: str, unit: str) -> np.ndarray:
     """Array of float, all positive and finite."""
     try:
         array = np.asarray(value, dtype=float)
@@ -351,67 +357,6 @@ def _positive(value, what: str, unit: str) -> np.ndarray:
     return array
 
 
-def _plain(value: np.ndarray):
+def _plain(value: np.ndarray) -> Any:
     """A float from a 0-d array, anything else unchanged."""
     return float(value) if np.ndim(value) == 0 else value
-
-
-def constant(
-    index: float,
-    *,
-    name: str = "constant index",
-    n2_m2_per_w: float | None = None,
-    dn_dt_per_k: float | None = None,
-) -> Medium:
-    """Non-dispersive medium.
-
-    Parameters
-    ----------
-    index : float
-        Refractive index, 1 to 10.
-    name : str
-    n2_m2_per_w : float, optional
-        Kerr index, m2/W.
-    dn_dt_per_k : float, optional
-        Slope of the index with temperature, 1/K, from 20 degC.
-
-    Raises
-    ------
-    OutOfRange
-        The index is not between 1 and 10.
-    InputError
-        A value is not a finite number.
-
-    Examples
-    --------
-    >>> constant(1.9963, name="core").index(1.55)
-    1.9963
-    """
-    value = _finite(index, "index")
-    if not 1.0 <= value <= 10.0:
-        raise OutOfRange(f"index {value:g} of {name}: give a value from 1 to 10")
-    given = {"n2": n2_m2_per_w, "dn/dT": dn_dt_per_k}
-    return Medium(
-        key=name,
-        name=name,
-        form="given index",
-        formula="constant",
-        coefficients=(value,),
-        citation="given by the user",
-        n2_m2_per_w=None if n2_m2_per_w is None else _finite(n2_m2_per_w, "n2_m2_per_w"),
-        dn_dt_per_k=None if dn_dt_per_k is None else _finite(dn_dt_per_k, "dn_dt_per_k"),
-        n2_citation="" if n2_m2_per_w is None else "given by the user",
-        dn_dt_citation="" if dn_dt_per_k is None else "given by the user",
-        caveats=("non-dispersive",),
-        missing=tuple(what for what, v in given.items() if v is None),
-    )
-
-
-def _finite(value, what: str) -> float:
-    try:
-        number = float(value)
-    except (TypeError, ValueError) as exc:
-        raise InputError(f"{what} {value!r}: give a number") from exc
-    if not math.isfinite(number):
-        raise InputError(f"{what} {number}: give a finite number")
-    return number

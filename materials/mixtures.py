@@ -11,7 +11,7 @@ whose constants are polynomials of composition and temperature.
 from __future__ import annotations
 
 import math
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from typing import Any
 
 import numpy as np
@@ -34,7 +34,7 @@ def law(mixture: Mapping[str, Any], fraction: float) -> tuple[str, tuple[float, 
     return "photon_energy_poles", _gehrsitz(constants, fraction, temperature_k)
 
 
-def _at(coefficients, x: float) -> float:
+def _at(coefficients: Sequence[float], x: float) -> float:
     return float(polynomial.polyval(x, np.asarray(coefficients, dtype=float)))
 
 

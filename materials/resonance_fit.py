@@ -20,6 +20,7 @@ from __future__ import annotations
 
 import itertools
 import math
+from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -149,7 +150,9 @@ class _Problem:
         found.sort(key=lambda pair: pair[0])
         return [coefficients for _, coefficients in found[:_REFINED_STARTS]]
 
-    def _strengths(self, structure: Structure, poles, v: float) -> tuple[float, np.ndarray]:
+    def _strengths(
+        self, structure: Structure, poles: Sequence[float], v: float
+    ) -> tuple[float, np.ndarray]:
         """Misfit and coefficients with the best strengths for given poles."""
         all_poles = [*poles, 0.0] if structure.background else list(poles)
         weight = 1.0 / (2.0 * self.index * self.sigma)
