@@ -174,8 +174,9 @@ def write_csv(
 ) -> None:
     """Write variables as one table, whole or not at all.
 
-    Scalars go to the comment lines. Everything else becomes a column, repeated along the
-    axes it does not have: a map over two axes comes out with one row per point. An error
+    Scalars go to the comment lines; where there is nothing else they are a table of one
+    row. Everything else becomes a column, repeated along the axes it does not have: a map
+    over two axes comes out with one row per point. An error
     bar is the column ``<name>_error``; complex values are two columns, ``_re`` and ``_im``.
 
     Parameters
@@ -200,8 +201,8 @@ def write_csv(
         Two variables disagree about the length of an axis.
     """
     lengths = _axes(variables)
-    scalars = [v for v in variables if not v.dims]
-    tabled = [v for v in _with_counters(variables, lengths) if v.dims]
+    scalars = [v for v in variables if not v.dims and lengths]
+    tabled = [v for v in _with_counters(variables, lengths) if v.dims or not lengths]
     tabled.sort(key=lambda v: v.dims != (v.name,))  # stable: axes first
     text = io.StringIO()
     for line in _comments(title, scalars, tabled, inputs or {}, notes, provenance or {}):

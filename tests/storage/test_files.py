@@ -118,6 +118,16 @@ def test_axis_without_values(tmp_path):
     assert table["pair"].tolist() == [0, 1]
 
 
+def test_scalars_alone_are_one_row(tmp_path):
+    scalar = Variable("flux_per_s", np.array(3.5), (), "1/s", "flux", np.array(0.1))
+    word = Variable("counted", np.array("pairs"), (), "", "what")
+    write_csv(tmp_path / "a.csv", [scalar, word], title="flux")
+    table = pandas.read_csv(tmp_path / "a.csv", comment="#")
+    assert table.to_dict("records") == [
+        {"flux_per_s": 3.5, "flux_per_s_error": 0.1, "counted": "pairs"}
+    ]
+
+
 def test_empty_table(tmp_path):
     column = Variable("zero_um", np.array([]), ("crossing",), "um", "zero dispersion")
     write_hdf5(tmp_path / "a.h5", [column], title="none")
