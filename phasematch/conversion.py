@@ -141,4 +141,4 @@ def _root(function: Callable[[float], float], a: float, b: float) -> float:
     fa, fb = function(a), function(b)
     if fa == 0.0 or fb == 0.0:
         return float(a if fa == 0.0 else b)
-    return float(brentq(function, a, b, xtol=1e-13 * b, rtol=8.9e-16))
+    return float(brentq(function, a, b, xtol=1e-15 * b, rtol=8.9e-16))
