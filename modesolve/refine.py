@@ -52,6 +52,9 @@ BAR_SHARE = 0.5
 #: Relative rounding floor of beta; order k of its series is less exact by (4/omega)^k.
 ROUNDING = 2e-12
 
+#: A shift lies this factor above the eigenvalue expected.
+ABOVE = 1.0 + 1e-4
+
 #: Least overlap of a mode with itself on another grid or at another frequency.
 LEAST_OVERLAP = 0.7
 
@@ -335,6 +338,7 @@ def refine(
     seed: Seed,
     ladder: tuple[int, ...] = LADDER,
     order: int = ORDER,
+    margins: Margins | None = None,
 ) -> Resolved:
     """Resolve one mode on a ladder of grids.
 
@@ -347,6 +351,10 @@ def refine(
         Refinements, rising, at least three.
     order : int
         Order of the frequency series.
+    margins : Margins, optional
+        Box to solve in; sized from the decay of the field by default. Solves that are to
+        be interpolated share one box, so that their errors are one smooth function; that
+        a box is too small for one of them shows in the error bar.
 
     Raises
     ------
@@ -360,7 +368,7 @@ def refine(
     if len(ladder) < 3 or any(a >= b for a, b in pairwise(ladder)):
         raise InputError(f"ladder = {ladder}: give at least three rising refinements")
     started = time.perf_counter()
-    climb = _Climb(layout, omega, seed, order)
+    climb = _Climb(layout, omega, seed, order, margins)
     for refinement in ladder:
         climb.step(refinement)
     return climb.result(ladder, started)
@@ -369,7 +377,9 @@ def refine(
 class _Climb:
     """State of one climb of the ladder."""
 
-    def __init__(self, layout: Layout, omega: float, seed: Seed, order: int) -> None:
+    def __init__(
+        self, layout: Layout, omega: float, seed: Seed, order: int, margins: Margins | None
+    ) -> None:
         self.layout = layout
         self.omega = omega
         self.k0 = omega / C_UM_PER_PS
@@ -377,7 +387,7 @@ class _Climb:
         self.backgrounds = _backgrounds(layout, omega)
         self.cutoff = max(self.backgrounds.values(), default=0.0)
         self.permittivity = layout.permittivity(omega, order)
-        self.margins: Margins | None = None
+        self.margins = margins
         self.levels: list[dict[str, np.ndarray]] = []
         self.refinements: list[int] = []
         self.finest: tuple[Operators, Jet] | None = None
@@ -387,25 +397,24 @@ class _Climb:
     def step(self, refinement: int) -> None:
         """Solve one more grid; the first one also settles the margins."""
         if self.margins is None:
-            self._settle(refinement)
+            self.margins = self._settle(refinement)
         shift = self._predicted(refinement)
         self.levels.append(self._solve(refinement, shift, self.seed.walls, keep=True))
         self.refinements.append(refinement)
 
-    def _settle(self, refinement: int) -> None:
+    def _settle(self, refinement: int) -> Margins:
         """Margins from the decay at the index that the coarsest grid itself gives."""
-        n_eff = max(self.seed.n_eff, self.cutoff + 1.2e-3)
         for _ in range(2):
-            margins = margins_for(self.backgrounds, self.omega, n_eff)
+            least = self.cutoff + 1.2e-3
+            margins = margins_for(self.backgrounds, self.omega, max(self.seed.n_eff, least))
             pencil = self._pencil(margins, refinement, self.seed.walls)
-            shift = (self.k0 * n_eff) ** 2 * (1.0 + 1e-4)
+            shift = (self.k0 * max(self.seed.n_eff, least)) ** 2 * ABOVE
             mode, _, _ = _recognise(pencil, shift, self.seed, refinement)
             self.factorisations += pencil.factorisations
-            n_eff = float(np.sqrt(max(np.real(mode.eigenvalue), 0.0))) / self.k0
-            if n_eff <= self.cutoff:
-                n_eff = self.cutoff + 1.2e-3
-        self.margins = margins_for(self.backgrounds, self.omega, n_eff)
-        self.seed = _seed(pencil.operators, mode, self.k0, self.seed.walls, refinement)
+            self.seed = _seed(pencil.operators, mode, self.k0, self.seed.walls, refinement)
+        return margins_for(
+            self.backgrounds, self.omega, max(self.seed.n_eff, self.cutoff + 1.2e-3)
+        )
 
     def _pencil(self, margins: Margins, refinement: int, walls: Walls) -> Pencil:
         grid: Grid = self.layout.grid(margins, refinement)
@@ -423,7 +432,7 @@ class _Climb:
                 a, b = (1.0 / m**2 for m in self.refinements[-2:])
                 slope = (squares[-1] - squares[-2]) / (b - a)
                 squared = squares[-1] + slope * (1.0 / refinement**2 - b)
-        return squared * (1.0 + 1e-4)
+        return squared * ABOVE
 
     def _solve(self, refinement: int, shift: float, walls: Walls, keep: bool) -> dict:
         pencil = self._pencil(self.margins, refinement, walls)
@@ -441,6 +450,8 @@ class _Climb:
         if keep:
             self.unknowns += pencil.matrix.shape[0]
             self.finest = (pencil.operators, jet)
+            # the look of the mode here and now, for the next grid
+            self.seed = _seed(pencil.operators, mode, self.k0, walls, refinement)
         return mode_series(self.layout, pencil.operators, jet)
 
     def _other_walls(self) -> dict[str, np.ndarray]:
@@ -449,7 +460,7 @@ class _Climb:
         if not sides:
             return self.levels[0]
         walls = replace(self.seed.walls, **dict.fromkeys(sides, "magnetic"))
-        shift = float(np.real(self.levels[0]["beta"][0])) ** 2 * (1.0 + 1e-4)
+        shift = float(np.real(self.levels[0]["beta"][0])) ** 2 * ABOVE
         return self._solve(self.refinements[0], shift, walls, keep=False)
 
     def result(self, ladder: tuple[int, ...], started: float) -> Resolved:
