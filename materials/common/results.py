@@ -34,6 +34,7 @@ from typing import Any
 import numpy as np
 
 from materials.common.files import Variable, plain, write_csv, write_hdf5
+from materials.common.printing import format_number, printed
 
 __all__ = [
     "ErrorBars",
@@ -45,8 +46,6 @@ __all__ = [
     "make_provenance",
     "quantity",
 ]
-
-_ROWS_SHOWN = 8
 
 
 def quantity(long_name: str, unit: str, dims: Sequence[str] = (), **field_kwargs: Any) -> Any:
@@ -187,45 +186,6 @@ def _version() -> str:
         return "0+source"
 
 
-def format_number(value: Any, bar: float | None = None, *, digits: int = 6) -> str:
-    """A number as text, its error bar in brackets behind the last digits.
-
-    The bar is rounded up, to one digit, or two where it starts with a 1; a bar of 1 or
-    more is written out behind ``+-``. Without a bar (None, 0 or NaN) ``digits``
-    significant digits are shown.
-
-    Examples
-    --------
-    >>> format_number(1.83454380, 1e-7)
-    '1.83454380(10)'
-    >>> format_number(-1234.567, 23.4)
-    '-1230 +- 30'
-    >>> format_number(1.23456e-7, 3e-11)
-    '1.2346(3)e-07'
-    >>> format_number(88.07, None)
-    '88.07'
-    """
-    if isinstance(value, str | bool | np.bool_ | int | np.integer):
-        return str(value)
-    value = float(value)
-    if bar is None or not math.isfinite(value) or not (0 < bar < math.inf):
-        return f"{value:.{digits}g}"
-    place = math.floor(math.log10(bar))
-    leading = bar / 10.0**place
-    place -= 1 if leading < 1.9 else 0
-    units = math.ceil(bar / 10.0**place * (1 - 1e-9))
-    if units >= 100 or (units == 10 and leading >= 1.9):
-        units, place = units // 10, place + 1
-    if bar >= 1:
-        return f"{round(value, -place):.{max(0, -place)}f} +- {units * 10.0**place:g}"
-    size = max(math.floor(math.log10(abs(value))) if value else 0, place)
-    if size - place > 15:  # below the rounding of the value itself
-        return f"{value:.16g} +- {bar:.0e}"
-    if size < -3 and place < -4:  # too small to write out
-        return f"{value / 10.0**size:.{size - place}f}({units})e{size:+03d}"
-    return f"{value:.{-place}f}({units})"
-
-
 class Result:
     """Mixin of all result dataclasses: a printed table, CSV and HDF5.
 
@@ -295,72 +255,9 @@ class Result:
         write_hdf5(path, self.variables(), **self._about())
 
     def __repr__(self) -> str:
-        variables = [v for v in self.variables() if v.name != "label"]
-        scalars = [v for v in variables if not v.dims]
-        rows = [(v.name, format_number(*_pair(v)), _unit(v.unit)) for v in scalars]
-        rows += [(v.name, _range(v), _unit(v.unit)) for v in variables if len(v.dims) > 1]
-        lines = [_title(self), *_aligned(rows)]
-        for dim in dict.fromkeys(v.dims for v in variables if len(v.dims) == 1):
-            lines += _listing([v for v in variables if v.dims == dim])
-        lines += [f"  note: {note}" for note in getattr(self, "notes", ()) or ()]
-        return "\n".join(lines)
+        return printed(_title(self), self.variables(), getattr(self, "notes", ()) or ())
 
 
 def _title(result: Any) -> str:
     label = getattr(result, "label", "")
     return f"{type(result).__name__} {label}".rstrip() if isinstance(label, str) else str(label)
-
-
-def _unit(unit: str) -> str:
-    return "" if unit == "1" else unit
-
-
-def _pair(variable: Variable, index: Any = ()) -> tuple[Any, float | None]:
-    """Value and bar of a scalar variable, or of one entry of an array."""
-    value = np.asarray(variable.values)[index]
-    value = value.item() if hasattr(value, "item") else value
-    if isinstance(value, complex):
-        return f"{value:.6g}", None
-    if variable.error is None:
-        return value, None
-    return value, float(np.broadcast_to(variable.error, np.shape(variable.values))[index])
-
-
-def _range(variable: Variable) -> str:
-    """Shape and extent of an array that is too large to print."""
-    values = np.asarray(variable.values)
-    shape = " x ".join(map(str, values.shape))
-    if values.dtype.kind not in "fiu" or not np.isfinite(values).any():
-        return f"{shape} values"
-    low, high = np.nanmin(values), np.nanmax(values)
-    return f"{format_number(low)} .. {format_number(high)} ({shape})"
-
-
-def _aligned(rows: Sequence[tuple[str, ...]]) -> list[str]:
-    """Rows of cells as lines, columns left-aligned and two blanks in front."""
-    if not rows:
-        return []
-    widths = [max(len(row[i]) for row in rows) for i in range(len(rows[0]))]
-    joined = ("   ".join(c.ljust(w) for c, w in zip(row, widths, strict=True)) for row in rows)
-    return ["  " + line.rstrip() for line in joined]
-
-
-def _listing(variables: Sequence[Variable]) -> list[str]:
-    """Arrays along one axis, side by side: the first rows and the last; columns to fit 80."""
-    length = len(variables[0].values)
-    shown = list(range(length))
-    if length > _ROWS_SHOWN:
-        shown = [*range(_ROWS_SHOWN - 2), length - 1]
-    columns: list[list[str]] = []
-    width = 2
-    for variable in variables:
-        cells = [variable.name, *(format_number(*_pair(variable, i)) for i in shown)]
-        width += max(map(len, cells)) + 3
-        if columns and width > 80:
-            break
-        columns.append(cells)
-    rows = list(zip(*columns, strict=True))
-    if length > _ROWS_SHOWN:
-        rows.insert(len(rows) - 1, tuple("..." if i == 0 else "" for i in range(len(columns))))
-    left = [v.name for v in variables[len(columns) :]]
-    return [*_aligned(rows), *([f"  and {', '.join(left)}"] if left else [])]
