@@ -1,0 +1,45 @@
+"""What dispersion means for four-wave mixing: channels and rings.
+
+A curve comes in (`modesolve.dispersion`, or anything that has the `Curve` protocol), and
+every number goes out with its error bar::
+
+    curve = modesolve.dispersion(section, 1.2, 2.0, mode="TE0")
+    channel = phasematch.Channel(curve, length_mm=10, loss_db_per_cm=0.2)
+    channel.map(pump_um, signal_um, pump_w)        # mismatch, gain, efficiency, idler
+    ring = phasematch.Ring(curve, radius_um=100, q_intrinsic=2e6, q_coupling=2e6)
+    ring.pairs(pump_um=1.55, count=60)             # which resonances line up
+
+Neither click nor Matplotlib is loaded by importing this package.
+"""
+
+from phasematch.channel import Channel
+from phasematch.channel_results import ChannelMap, ConversionBand, PairFlux
+from phasematch.mixing import LASER_CAUTION, Curve, error_bar
+from phasematch.ring import Ring
+from phasematch.ring_results import (
+    DetuningMap,
+    IntegratedDispersion,
+    PairRates,
+    PairTable,
+    Resonances,
+    RingDispersion,
+    StimulatedIdler,
+)
+
+__all__ = [
+    "LASER_CAUTION",
+    "Channel",
+    "ChannelMap",
+    "ConversionBand",
+    "Curve",
+    "DetuningMap",
+    "IntegratedDispersion",
+    "PairFlux",
+    "PairRates",
+    "PairTable",
+    "Resonances",
+    "Ring",
+    "RingDispersion",
+    "StimulatedIdler",
+    "error_bar",
+]

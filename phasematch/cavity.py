@@ -1,0 +1,161 @@
+"""Closed forms of a travelling-wave resonator, as pure functions of arrays.
+
+Rates in rad/ps: Gamma = omega/Q is the energy decay rate and the full width at half
+maximum, Gamma_c the part of it that goes into couplers. Powers in W, lengths in um, gamma
+in 1/(W m); numbers of photons are pure. With the Hamiltonian -hbar g/2 a+ a+ a a over all
+modes the pump line moves by -gN and every other by -2gN.
+
+References
+----------
+Forms as in Azzini et al., Opt. Lett. 37, 3807 (2012), and Helt, Liscidini, Sipe, J. Opt.
+Soc. Am. B 29, 2199 (2012), from memory; derived again from the two-mode Langevin equations.
+
+Examples
+--------
+>>> float(threshold_fraction(0.5, 1.0, 1.0, 0.0))   # gN = Gamma/2, aligned: just there
+1.0
+"""
+
+from __future__ import annotations
+
+from typing import Any
+
+import numpy as np
+
+from materials.common.constants import C_UM_PER_PS, HBAR_W_PS2
+
+_PER_UM = 1e-6  # 1/(W m) in 1/(W um)
+
+
+def build_up(
+    n_group: Any,
+    length_um: Any,
+    width_rad_per_ps: Any,
+    coupling_rad_per_ps: Any,
+    detuning_rad_per_ps: Any = 0.0,
+) -> Any:
+    """Circulating over bus power, B = [4 v_g Gamma_c/(L Gamma^2)]/(1 + (2 d/Gamma)^2)."""
+    speed = C_UM_PER_PS / n_group
+    peak = 4.0 * speed * coupling_rad_per_ps / (length_um * np.square(width_rad_per_ps))
+    return peak / (1.0 + np.square(2.0 * detuning_rad_per_ps / width_rad_per_ps))
+
+
+def photons_inside(
+    pump_w: Any, omega_rad_per_ps: Any, width_rad_per_ps: Any, coupling_rad_per_ps: Any
+) -> Any:
+    """Pump photons in the ring on resonance, N = 4 Gamma_c P/(hbar omega Gamma^2)."""
+    energy = HBAR_W_PS2 * omega_rad_per_ps
+    return 4.0 * coupling_rad_per_ps * pump_w / (energy * np.square(width_rad_per_ps))
+
+
+def kerr_shift_per_photon(
+    gamma_per_w_m: Any, omega_rad_per_ps: Any, n_group: Any, length_um: Any
+) -> Any:
+    """Shift g = gamma v_g^2 hbar omega/L of the pump line for each of its photons, rad/ps."""
+    speed = C_UM_PER_PS / n_group
+    return gamma_per_w_m * _PER_UM * speed**2 * HBAR_W_PS2 * omega_rad_per_ps / length_um
+
+
+def pair_rate_inside(
+    gain_rad_per_ps: Any,
+    width_signal_rad_per_ps: Any,
+    width_idler_rad_per_ps: Any,
+    misalignment_rad_per_ps: Any,
+) -> Any:
+    """Pairs made inside per ps at low gain, G^2 (Gs + Gi)/(delta^2 + ((Gs + Gi)/2)^2), G = gN.
+
+    ``misalignment_rad_per_ps`` is the hot one. Divide by 1 - x (`threshold_fraction`) for
+    the exact number below threshold.
+    """
+    both = width_signal_rad_per_ps + width_idler_rad_per_ps
+    return (
+        np.square(gain_rad_per_ps)
+        * both
+        / (np.square(misalignment_rad_per_ps) + np.square(0.5 * both))
+    )
+
+
+def threshold_fraction(
+    gain_rad_per_ps: Any,
+    width_signal_rad_per_ps: Any,
+    width_idler_rad_per_ps: Any,
+    misalignment_rad_per_ps: Any,
+) -> Any:
+    """x = 4 (gN)^2/[Gs Gi (1 + 4 delta^2/(Gs + Gi)^2)]; the pair oscillates at x = 1."""
+    both = width_signal_rad_per_ps + width_idler_rad_per_ps
+    detuned = 1.0 + np.square(2.0 * misalignment_rad_per_ps / both)
+    product = width_signal_rad_per_ps * width_idler_rad_per_ps
+    return 4.0 * np.square(gain_rad_per_ps) / (product * detuned)
+
+
+def threshold_gain(
+    width_signal_rad_per_ps: Any, width_idler_rad_per_ps: Any, misalignment_rad_per_ps: Any
+) -> np.ndarray:
+    """gN at which a pair oscillates, the laser on the pump's hot resonance, rad/ps.
+
+    Parameters
+    ----------
+    width_signal_rad_per_ps, width_idler_rad_per_ps : array_like
+    misalignment_rad_per_ps : array_like
+        The cold one, delta_mu. The Kerr shift takes 2gN off it, so a pair can only
+        oscillate where it is positive.
+
+    Returns
+    -------
+    ndarray
+        NaN where it is not. For equal widths (Gamma^2 + delta_mu^2)/(4 delta_mu).
+
+    Notes
+    -----
+    x = 1 with delta = delta_mu - y, y = 2gN, Gamma the mean width and r = Gs Gi/Gamma^2 is
+    (1 - r) y^2 + 2 r delta_mu y - r (Gamma^2 + delta_mu^2) = 0.
+    """
+    mean = 0.5 * (np.asarray(width_signal_rad_per_ps) + width_idler_rad_per_ps)
+    ratio = width_signal_rad_per_ps * width_idler_rad_per_ps / mean**2
+    # half the difference over the mean, squared: 1 - r without cancellation
+    less = np.square(0.5 * (width_signal_rad_per_ps - np.asarray(width_idler_rad_per_ps)) / mean)
+    delta = np.asarray(misalignment_rad_per_ps, dtype=float)
+    wanted = ratio * (mean**2 + delta**2)
+    positive = delta > 0.0
+    safe = np.where(positive, delta, 1.0)
+    y = wanted / (ratio * safe + np.sqrt((ratio * safe) ** 2 + less * wanted))
+    return np.where(positive, 0.5 * y, np.nan)
+
+
+def pump_for_photons(
+    photons: Any, omega_rad_per_ps: Any, width_rad_per_ps: Any, coupling_rad_per_ps: Any
+) -> Any:
+    """Bus power in W that keeps N photons inside: P = hbar omega Gamma^2 N/(4 Gamma_c)."""
+    energy = HBAR_W_PS2 * omega_rad_per_ps
+    return energy * np.square(width_rad_per_ps) * photons / (4.0 * coupling_rad_per_ps)
+
+
+def stimulated_idler_w(
+    gamma_per_w_m: Any,
+    length_um: Any,
+    pump_w: Any,
+    signal_w: Any,
+    build_ups: tuple[Any, Any, Any],
+    frequency_ratio: Any = 1.0,
+) -> Any:
+    """Idler power in the bus, (omega_i/omega_s)(gamma L P_p)^2 P_s B_p^2 B_s B_i, low gain.
+
+    ``build_ups`` are those of pump, signal and idler, each at its own detuning from its
+    hot resonance; ``frequency_ratio`` is omega_i/omega_s.
+    """
+    pump, signal, idler = build_ups
+    turn = gamma_per_w_m * _PER_UM * length_um * pump_w
+    return frequency_ratio * np.square(turn * pump) * signal_w * signal * idler
+
+
+def spontaneous_idler_w(
+    gamma_per_w_m: Any, length_um: Any, pump_w: Any, build_up_: Any, omega: Any, n_group: Any
+) -> Any:
+    """Spontaneous power of one arm in the bus, aligned, equal widths, low gain.
+
+    (gamma L)^2 B^3 (hbar omega v_g/(2 L)) P^2: the vacuum acts as a seed of half a photon's
+    energy per round trip, lengthened by the build-up.
+    """
+    speed = C_UM_PER_PS / n_group
+    seed = HBAR_W_PS2 * omega * speed / (2.0 * length_um)
+    return np.square(gamma_per_w_m * _PER_UM * length_um * pump_w) * build_up_**3 * seed

@@ -1,0 +1,434 @@
+"""A ring: its resonances, how far pairs of them miss alignment, and what light does in it.
+
+beta is taken at the centre radius R and the azimuthal order is m = beta R, so resonances
+are where beta R is whole. Misalignment of pair mu is omega_{+mu} + omega_{-mu} - 2 omega_0;
+positive where dispersion is anomalous. One bus, the pump on resonance; both quality
+factors are taken the same for all lines.
+"""
+
+from __future__ import annotations
+
+import math
+from dataclasses import dataclass, field, replace
+from typing import Any
+
+import numpy as np
+
+from materials.common.constants import C_UM_PER_PS, TWO_PI, omega_from_um, um_from_omega
+from materials.common.errors import OutOfRange
+from materials.common.results import ErrorBars, frozen_array
+from phasematch import cavity, inputs, ring_power
+from phasematch.bend_note import bend_note
+from phasematch.mixing import Curve, error_bar, inside, snap
+from phasematch.resonances import Lines, find_lines, order_range, ring_dispersion
+from phasematch.ring_results import (
+    DetuningMap,
+    IntegratedDispersion,
+    PairRates,
+    PairTable,
+    Resonances,
+    RingDispersion,
+    StimulatedIdler,
+)
+
+__all__ = ["Ring"]
+
+_MHZ = 1e6 / TWO_PI  # rad/ps in MHz
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Ring:
+    """A ring resonator of one waveguide.
+
+    Parameters
+    ----------
+    curve : Curve
+        Dispersion of the mode; never solved again here. When it was solved at another bend
+        radius, results carry a note with the estimated shift.
+    radius_um : float
+        Centre radius.
+    q_intrinsic : float
+        Quality factor of the uncoupled ring; a lossless ring is a large number.
+    q_coupling : float
+        Quality factor of all couplers together. The pump comes in and the photons go out
+        through them as if they were one; with several, a port has its share.
+
+    Raises
+    ------
+    OutOfRange
+        For values that are not positive and finite.
+    """
+
+    curve: Curve
+    radius_um: float = field(kw_only=True)
+    q_intrinsic: float = field(kw_only=True)
+    q_coupling: float = field(kw_only=True)
+
+    def __post_init__(self) -> None:
+        for name, unit in (("radius_um", "um"), ("q_intrinsic", ""), ("q_coupling", "")):
+            object.__setattr__(self, name, inputs.number(name, getattr(self, name), unit))
+
+    # ------------------------------------------------------------ numbers of the ring
+
+    @property
+    def length_um(self) -> float:
+        """Circumference 2 pi R, um."""
+        return TWO_PI * self.radius_um
+
+    @property
+    def q_loaded(self) -> float:
+        """Loaded quality factor, 1/(1/q_intrinsic + 1/q_coupling)."""
+        return 1.0 / (1.0 / self.q_intrinsic + 1.0 / self.q_coupling)
+
+    @property
+    def escape_fraction(self) -> float:
+        """Share Gamma_c/Gamma of the photons inside that leave through the couplers."""
+        return self.q_loaded / self.q_coupling
+
+    @property
+    def notes(self) -> tuple[str, ...]:
+        """Notes of the curve, and of its bend radius where it is not the ring's."""
+        return (*self.curve.notes, *bend_note(self.curve, self.radius_um))
+
+    def fsr_ghz(self, wavelength_um: Any) -> Any:
+        """Free spectral range c/(n_g L), GHz; raises `OutOfRange` outside the band."""
+        n_group = np.asarray(self.curve.n_group(wavelength_um))
+        return (1e3 * C_UM_PER_PS / (n_group * self.length_um))[()]
+
+    def linewidth_mhz(self, wavelength_um: Any) -> Any:
+        """Loaded linewidth, full width at half maximum, MHz."""
+        omega = omega_from_um(inputs.numbers("wavelength_um", wavelength_um, "um"))
+        return (omega / self.q_loaded * _MHZ)[()]
+
+    def finesse(self, wavelength_um: Any) -> Any:
+        """Free spectral range over linewidth."""
+        return 1e3 * self.fsr_ghz(wavelength_um) / self.linewidth_mhz(wavelength_um)
+
+    def build_up(self, wavelength_um: Any, detuning_mhz: Any = 0.0) -> Any:
+        """Circulating power over bus power at a detuning from a resonance."""
+        omega = omega_from_um(inputs.numbers("wavelength_um", wavelength_um, "um"))
+        detuning = np.asarray(detuning_mhz, dtype=float) / _MHZ
+        n_group = np.asarray(self.curve.n_group(wavelength_um))
+        width, coupling = omega / self.q_loaded, omega / self.q_coupling
+        return cavity.build_up(n_group, self.length_um, width, coupling, detuning)[()]
+
+    # ------------------------------------------------------------ cold resonances
+
+    def resonances(self, short_um: float | None = None, long_um: float | None = None) -> Resonances:
+        """All resonances between two wavelengths (by default in the solved band).
+
+        Raises
+        ------
+        OutOfRange
+            For wavelengths outside the band.
+        """
+        order = self._orders(short_um, long_um)
+        lines = self._lines(order)
+
+        def stack(curve: Curve) -> np.ndarray:
+            around = find_lines(
+                curve, self.radius_um, np.append(order, [order[0] - 1, order[-1] + 1])
+            )
+            n = len(order)
+            up, down = np.r_[1:n, n + 1], np.r_[n, 0 : n - 1]
+            spacing = 0.5e3 / TWO_PI * around.apart(up, down)
+            omega = around.omega_rad_per_ps[:n]
+            return np.stack([omega / TWO_PI, um_from_omega(omega), spacing])
+
+        values, names = stack(self.curve), ("frequency_thz", "wavelength_um", "fsr_ghz")
+        bars = error_bar(self.curve, stack)
+        columns: dict[str, Any] = {n: frozen_array(v) for n, v in zip(names, values, strict=True)}
+        return Resonances(
+            order=frozen_array(order),
+            **columns,
+            linewidth_mhz=frozen_array(lines.omega_rad_per_ps / self.q_loaded * _MHZ),
+            error=ErrorBars(dict(zip(names, bars, strict=True))),
+            **self._about(),
+        )
+
+    def dispersion_coefficients(self, pump_um: float) -> RingDispersion:
+        """D1 .. D4 about the resonance nearest to ``pump_um``, from exact derivatives.
+
+        Raises
+        ------
+        OutOfRange
+            When the pump lies outside the band.
+        """
+        order = self._pump_order(pump_um)
+        names = ("d1_ghz", "d2_mhz", "d3_khz", "d4_khz")
+        scale = np.array([1e3, 1e6, 1e9, 1e9]) / TWO_PI
+        values = scale * self._coefficients(self.curve, order)
+        bars = error_bar(self.curve, lambda c: scale * self._coefficients(c, order))
+        return RingDispersion(
+            pump_order=order,
+            pump_um=self._pump_um(order),
+            **dict(zip(names, values.tolist(), strict=True)),
+            error=ErrorBars(dict(zip(names, bars.tolist(), strict=True))),
+            **self._about(pump_um=pump_um),
+        )
+
+    def integrated_dispersion(self, pump_um: float, count: int) -> IntegratedDispersion:
+        """omega_mu - omega_0 - D1 mu for mu from -count to count.
+
+        Raises
+        ------
+        OutOfRange
+            When the pump lies outside the band or ``count`` is not positive.
+        """
+        order, count = self._pump_order(pump_um), inputs.whole("count", count, most=100_000)
+        mu = np.arange(-count, count + 1)
+
+        def integrated(curve: Curve) -> np.ndarray:
+            lines = find_lines(curve, self.radius_um, order + mu)
+            d1 = self._coefficients(curve, order)[0]
+            return _MHZ * (lines.apart(slice(None), count) - d1 * mu)
+
+        lines = self._lines(order + mu)
+        return IntegratedDispersion(
+            mu=frozen_array(mu),
+            frequency_thz=frozen_array(lines.omega_rad_per_ps / TWO_PI),
+            integrated_mhz=frozen_array(integrated(self.curve)),
+            reason=frozen_array(_beyond(np.isfinite(lines.omega_rad_per_ps))),
+            pump_order=order,
+            pump_um=self._pump_um(order),
+            error=ErrorBars(integrated_mhz=error_bar(self.curve, integrated)),
+            **self._about(pump_um=pump_um),
+        )
+
+    def pairs(self, pump_um: float, count: int) -> PairTable:
+        """Cold misalignment of the pairs mu = 1 .. count about a pump resonance.
+
+        Parameters
+        ----------
+        pump_um : float, um
+            The pump is the resonance nearest to it.
+        count : int
+            How many pairs.
+
+        Returns
+        -------
+        PairTable
+            Arrays of length count, the signal at +mu (the higher frequency). Pairs beyond
+            the solved band are NaN with the reason.
+
+        Raises
+        ------
+        OutOfRange
+            When the pump lies outside the band or ``count`` is not positive.
+        """
+        order, count = self._pump_order(pump_um), inputs.whole("count", count, most=100_000)
+        mu = np.arange(1, count + 1)
+        around = np.arange(order - count, order + count + 1)
+        names = ("misalignment_mhz", "signal_thz", "idler_thz", "signal_um", "idler_um")
+
+        def stack(curve: Curve) -> np.ndarray:
+            lines = find_lines(curve, self.radius_um, around)
+            up, down = lines.omega_rad_per_ps[count + mu], lines.omega_rad_per_ps[count - mu]
+            miss = _MHZ * lines.misaligned(count, mu)
+            thz = [up / TWO_PI, down / TWO_PI]
+            return np.stack([miss, *thz, um_from_omega(up), um_from_omega(down)])
+
+        values = dict(zip(names, stack(self.curve), strict=True))
+        bars = dict(zip(names, error_bar(self.curve, stack), strict=True))
+        width = 0.5e6 * (values["signal_thz"] + values["idler_thz"]) / self.q_loaded
+        miss = values["misalignment_mhz"]
+        bars["misalignment_linewidths"] = bars["misalignment_mhz"] / width
+        centre = find_lines(self.curve, self.radius_um, [order]).omega_rad_per_ps
+        columns: dict[str, Any] = {name: frozen_array(v) for name, v in values.items()}
+        return PairTable(
+            mu=frozen_array(mu),
+            **columns,
+            misalignment_linewidths=frozen_array(miss / width),
+            linewidth_mhz=frozen_array(width),
+            aligned=frozen_array(np.abs(miss) <= width),
+            reason=frozen_array(_beyond(np.isfinite(miss))),
+            pump_order=order,
+            pump_um=float(um_from_omega(centre[0])),
+            pump_thz=float(centre[0] / TWO_PI),
+            error=ErrorBars(bars),
+            **self._about(pump_um=pump_um),
+        )
+
+    def detuning_map(
+        self, pump_band_um: tuple[float, float] | None = None, count: int = 40
+    ) -> DetuningMap:
+        """Cold misalignment for each pump resonance of a band and each pair about it.
+
+        Parameters
+        ----------
+        pump_band_um : (float, float), optional
+            Pump wavelengths in um; by default the whole solved band.
+        count : int
+            Pairs about each pump.
+
+        Returns
+        -------
+        DetuningMap
+            Arrays of shape (pumps, count).
+
+        Raises
+        ------
+        OutOfRange
+            When the pump band lies outside the solved one.
+        """
+        count = inputs.whole("count", count, most=100_000)
+        ends = (
+            (None, None)
+            if pump_band_um is None
+            else inputs.interval("pump_band_um", pump_band_um, "um")
+        )
+        pumps, mu = self._orders(*ends), np.arange(1, count + 1)
+        around = np.arange(pumps[0] - count, pumps[-1] + count + 1)
+        centre = (pumps - around[0])[:, None]
+
+        def missed(curve: Curve) -> np.ndarray:
+            return _MHZ * find_lines(curve, self.radius_um, around).misaligned(centre, mu)
+
+        omega = self._lines(around).omega_rad_per_ps
+        width = 0.5 * (omega[centre + mu] + omega[centre - mu]) / self.q_loaded * _MHZ
+        miss, bar = missed(self.curve), error_bar(self.curve, missed)
+        return DetuningMap(
+            pump_order=frozen_array(pumps),
+            mu=frozen_array(mu),
+            pump_um=frozen_array(um_from_omega(omega[centre[:, 0]])),
+            misalignment_mhz=frozen_array(miss),
+            linewidth_mhz=frozen_array(width),
+            misalignment_linewidths=frozen_array(miss / width),
+            aligned=frozen_array(np.abs(miss) <= width),
+            reason=frozen_array(_beyond(np.isfinite(miss))),
+            error=ErrorBars(misalignment_mhz=bar, misalignment_linewidths=bar / width),
+            **self._about(),
+        )
+
+    # ------------------------------------------------------------ with light in it
+
+    def spontaneous(
+        self, pump_um: float, pump_w: float, count: int, *, kerr_shift: bool = True
+    ) -> PairRates:
+        """Photon pairs of each pair of resonances, the pump on its (hot) resonance.
+
+        Parameters
+        ----------
+        pump_um : float, um
+            The pump is the resonance nearest to it, followed as it shifts.
+        pump_w : float, W
+            In the bus.
+        count : int
+            Pairs mu = 1 .. count.
+        kerr_shift : bool
+            False leaves out the shift by -2gN of signal and idler against the pump.
+
+        Returns
+        -------
+        PairRates
+            NaN with a reason beyond the band, and everywhere once a pair oscillates.
+
+        Raises
+        ------
+        OutOfRange
+            When the pump lies outside the band or a number makes no sense.
+        """
+        return ring_power.spontaneous(self, pump_um, pump_w, count, kerr_shift)
+
+    def stimulated(
+        self,
+        pump_um: float,
+        pump_w: float,
+        signal_w: float,
+        count: int,
+        *,
+        signal_detuning_mhz: float = 0.0,
+        kerr_shift: bool = True,
+    ) -> StimulatedIdler:
+        """Idler power with a seed on each signal resonance in turn; low gain.
+
+        Parameters
+        ----------
+        pump_um, pump_w, count, kerr_shift
+            As for `spontaneous`.
+        signal_w : float, W
+            Seed in the bus, small against the pump.
+        signal_detuning_mhz : float
+            Of the seed from the hot signal resonance.
+
+        Returns
+        -------
+        StimulatedIdler
+            (omega_i/omega_s)(gamma L P_p)^2 P_s B_p^2 B_s B_i; NaN as for `spontaneous`.
+
+        Raises
+        ------
+        OutOfRange
+            As for `spontaneous`.
+        """
+        return ring_power.stimulated(
+            self, pump_um, pump_w, signal_w, count, signal_detuning_mhz, kerr_shift
+        )
+
+    # ------------------------------------------------------------ the work
+
+    def _with(self, curve: Curve) -> Ring:
+        return replace(self, curve=curve)
+
+    def _about(self, **more: Any) -> dict[str, Any]:
+        """Fields that every result of the ring has."""
+        given = {"mode": self.curve.mode, "radius_um": self.radius_um}
+        quality = {"q_intrinsic": self.q_intrinsic, "q_coupling": self.q_coupling}
+        return {
+            "inputs": {**given, **quality, **more},
+            "notes": self.notes,
+            "provenance": getattr(self.curve, "provenance", None),
+        }
+
+    def _lines(self, order: Any) -> Lines:
+        return find_lines(self.curve, self.radius_um, order)
+
+    def _in_band(self, name: str, wavelength_um: float) -> float:
+        """Frequency of a wavelength in the solved band, rad/ps."""
+        wavelength = inputs.number(name, wavelength_um, "um")
+        omega = omega_from_um(wavelength)
+        if not inside(self.curve, omega):
+            short, long = self.curve.band_um
+            raise OutOfRange(
+                f"{name} = {wavelength:g} um is outside the solved band {short:g} to {long:g} um; "
+                "choose one inside or solve a wider band"
+            )
+        return float(snap(self.curve, omega))
+
+    def _orders(self, short_um: float | None, long_um: float | None) -> np.ndarray:
+        """Orders of all resonances between two wavelengths."""
+        low, high = order_range(self.curve, self.radius_um)
+        if long_um is not None:
+            omega = self._in_band("long end", long_um)
+            low = math.ceil(self.radius_um * float(self.curve.beta_rad_per_um(omega)))
+        if short_um is not None:
+            omega = self._in_band("short end", short_um)
+            high = math.floor(self.radius_um * float(self.curve.beta_rad_per_um(omega)))
+        if high < low:
+            short, long = self.curve.band_um
+            raise OutOfRange(
+                f"no resonance of the ring of radius {self.radius_um:g} um lies between "
+                f"{short_um or short:g} and {long_um or long:g} um; widen the band"
+            )
+        return np.arange(low, high + 1)
+
+    def _pump_order(self, pump_um: float) -> int:
+        """Order of the resonance nearest to a pump wavelength."""
+        omega = self._in_band("pump_um", pump_um)
+        orders = self._orders(None, None)
+        nearest = round(self.radius_um * float(self.curve.beta_rad_per_um(omega)))
+        return int(min(max(nearest, orders[0]), orders[-1]))
+
+    def _pump_um(self, order: int) -> float:
+        return float(um_from_omega(self._lines([order]).omega_rad_per_ps[0]))
+
+    def _coefficients(self, curve: Curve, order: int) -> np.ndarray:
+        """D1 .. D4 in rad/ps about a resonance."""
+        omega = find_lines(curve, self.radius_um, [order]).omega_rad_per_ps[0]
+        betas = [float(curve.beta_rad_per_um(omega, k)) for k in (1, 2, 3, 4)]
+        return ring_dispersion(betas, self.radius_um)
+
+
+def _beyond(good: np.ndarray) -> np.ndarray:
+    """Reasons of missing pairs or lines."""
+    return np.where(good, "", "beyond the solved band")

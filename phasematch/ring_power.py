@@ -1,0 +1,227 @@
+"""Light in a ring: spontaneous pairs and stimulated idlers, up to threshold and no further.
+
+The laser sits on the pump's hot resonance. The pump line is then shifted by -gN and all
+others by -2gN, so the hot misalignment is delta = delta_mu - 2gN.
+"""
+
+from __future__ import annotations
+
+from typing import TYPE_CHECKING, Any, NamedTuple
+
+import numpy as np
+
+from materials.common.constants import C_UM_PER_PS, TWO_PI, um_from_omega
+from materials.common.results import ErrorBars, frozen_array
+from phasematch import cavity, inputs
+from phasematch.mixing import LASER_CAUTION, Curve, error_bar, gamma_or_nan
+from phasematch.resonances import find_lines, order_range
+from phasematch.ring_results import PairRates, StimulatedIdler
+
+if TYPE_CHECKING:
+    from phasematch.ring import Ring
+
+_MHZ = 1e6 / TWO_PI  # rad/ps in MHz
+_PER_S = 1e12
+_HIGH = 0.1  # x above which low-gain forms get a note
+
+
+class Hot(NamedTuple):
+    """A pumped ring in rad/ps: scalars of the pump, arrays of the pairs."""
+
+    pump: float
+    gamma: float
+    n_group: float
+    photons: float
+    gain: float
+    oscillating: int  # the first pair of the whole band at or above threshold, 0 for none
+    signal: np.ndarray
+    idler: np.ndarray
+    width_s: np.ndarray
+    width_i: np.ndarray
+    cold: np.ndarray
+    delta: np.ndarray
+    x: np.ndarray
+
+
+def heat_up(ring: Ring, order: int, pump_w: float, count: int, kerr_shift: bool) -> Hot:
+    """Photons inside, Kerr shift, hot misalignment and threshold fraction of each pair."""
+    curve = ring.curve
+    low, high = order_range(curve, ring.radius_um)
+    # threshold is looked for among all pairs of the band, not only those asked for
+    most = max(count, min(order - low, high - order))
+    mu = np.arange(1, most + 1)
+    lines = find_lines(curve, ring.radius_um, np.arange(order - most, order + most + 1))
+    omega = lines.omega_rad_per_ps
+    pump = float(omega[most])
+    gamma = float(gamma_or_nan(curve, um_from_omega(pump)))
+    n_group = C_UM_PER_PS * float(curve.beta_rad_per_um(pump, 1))
+    photons = cavity.photons_inside(pump_w, pump, pump / ring.q_loaded, pump / ring.q_coupling)
+    gain = photons * cavity.kerr_shift_per_photon(gamma, pump, n_group, ring.length_um)
+    signal, idler = omega[most + mu], omega[most - mu]
+    width_s, width_i = signal / ring.q_loaded, idler / ring.q_loaded
+    cold = lines.misaligned(most, mu)
+    delta = cold - 2.0 * gain if kerr_shift else cold
+    x = cavity.threshold_fraction(gain, width_s, width_i, delta)
+    arrays = (part[:count] for part in (signal, idler, width_s, width_i, cold, delta, x))
+    first = int(np.argmax(x >= 1.0)) + 1 if np.any(x >= 1.0) else 0
+    return Hot(pump, gamma, n_group, photons, gain, first, *arrays)
+
+
+def _rates(ring: Ring, hot: Hot) -> np.ndarray:
+    """Made inside, singles of each arm, coincidences (1/s); x; threshold in W; shape (6, n)."""
+    below = np.nan if hot.oscillating else 1.0
+    weak = cavity.pair_rate_inside(hot.gain, hot.width_s, hot.width_i, hot.delta)
+    made = _PER_S * below * weak / np.where(hot.x < 1.0, 1.0 - hot.x, np.nan)
+    escape = ring.escape_fraction
+    photons = cavity.threshold_gain(hot.width_s, hot.width_i, hot.cold)
+    photons = photons / cavity.kerr_shift_per_photon(
+        hot.gamma, hot.pump, hot.n_group, ring.length_um
+    )
+    threshold = cavity.pump_for_photons(
+        photons, hot.pump, hot.pump / ring.q_loaded, hot.pump / ring.q_coupling
+    )
+    return np.stack([made, escape * made, escape * made, escape**2 * made, hot.x, threshold])
+
+
+def _reasons(hot: Hot) -> np.ndarray:
+    """Why a pair has no rate."""
+    beyond = ~np.isfinite(hot.cold)
+    own = hot.x >= 1.0
+    another = np.full(own.shape, hot.oscillating > 0)
+    unknown = np.full(own.shape, np.isnan(hot.gamma))
+    return np.select(
+        [beyond, unknown, own, another],
+        [
+            "beyond the solved band",
+            "gamma not known",
+            "at or above the threshold of oscillation",
+            f"the ring oscillates at this power (pair {hot.oscillating})",
+        ],
+        default="",
+    )
+
+
+def _notes(ring: Ring, hot: Hot, pump_w: float, low_gain: str) -> tuple[str, ...]:
+    notes = list(ring.notes)
+    top = np.nanmax(hot.x, initial=0.0)
+    if hot.oscillating:
+        notes.append("at or above threshold: no rates are given, the pump is no longer what it was")
+    elif top > _HIGH:
+        notes.append(f"x reaches {top:.2g} of the threshold's 1: {low_gain} hold at low gain")
+    return (*notes, LASER_CAUTION) if pump_w > 0.0 else tuple(notes)
+
+
+def spontaneous(
+    ring: Ring, pump_um: float, pump_w: float, count: int, kerr_shift: bool
+) -> PairRates:
+    """See `Ring.spontaneous`."""
+    pump_w = inputs.number("pump_w", pump_w, "W", least=True)
+    count = inputs.whole("count", count, most=100_000)
+    order = ring._pump_order(pump_um)
+
+    def numbers(curve: Curve) -> np.ndarray:
+        other = ring._with(curve)
+        now = heat_up(other, order, pump_w, count, kerr_shift)
+        return np.vstack([_rates(other, now), _MHZ * now.cold, _MHZ * now.delta])
+
+    hot = heat_up(ring, order, pump_w, count, kerr_shift)
+    names = (
+        "pairs_inside_per_s",
+        "singles_signal_per_s",
+        "singles_idler_per_s",
+        "coincidences_per_s",
+        "threshold_fraction",
+        "threshold_w",
+        "misalignment_mhz",
+        "hot_misalignment_mhz",
+    )
+    values, bars = numbers(ring.curve), error_bar(ring.curve, numbers)
+    columns: dict[str, Any] = {n: frozen_array(v) for n, v in zip(names, values, strict=True)}
+    return PairRates(
+        mu=frozen_array(np.arange(1, count + 1)),
+        **columns,
+        linewidth_mhz=frozen_array(0.5 * _MHZ * (hot.width_s + hot.width_i)),
+        signal_um=frozen_array(um_from_omega(hot.signal)),
+        idler_um=frozen_array(um_from_omega(hot.idler)),
+        reason=frozen_array(_reasons(hot)),
+        pump_um=um_from_omega(hot.pump),
+        pump_w=pump_w,
+        photons_inside=hot.photons,
+        build_up=float(ring.build_up(um_from_omega(hot.pump))),
+        kerr_shift_mhz=_MHZ * hot.gain,
+        error=ErrorBars(dict(zip(names, bars, strict=True))),
+        **_about(ring, hot, pump_um, pump_w, kerr_shift, "coincidences"),
+    )
+
+
+def stimulated(
+    ring: Ring,
+    pump_um: float,
+    pump_w: float,
+    signal_w: float,
+    count: int,
+    signal_detuning_mhz: float,
+    kerr_shift: bool,
+) -> StimulatedIdler:
+    """See `Ring.stimulated`."""
+    pump_w = inputs.number("pump_w", pump_w, "W", least=True)
+    signal_w = inputs.number("signal_w", signal_w, "W", least=True)
+    count = inputs.whole("count", count, most=100_000)
+    seed = inputs.number("signal_detuning_mhz", signal_detuning_mhz, "MHz", above=-1e12) / _MHZ
+    order = ring._pump_order(pump_um)
+
+    def power(curve: Curve) -> np.ndarray:
+        other = ring._with(curve)
+        return _idler_w(
+            other, heat_up(other, order, pump_w, count, kerr_shift), pump_w, signal_w, seed
+        )
+
+    hot = heat_up(ring, order, pump_w, count, kerr_shift)
+    idler_w, bar = power(ring.curve), error_bar(ring.curve, power)
+    per_w = np.nan if signal_w == 0.0 else 1.0 / signal_w
+    return StimulatedIdler(
+        mu=frozen_array(np.arange(1, count + 1)),
+        idler_w=frozen_array(idler_w),
+        efficiency=frozen_array(idler_w * per_w),
+        threshold_fraction=frozen_array(hot.x),
+        idler_detuning_mhz=frozen_array(-_MHZ * (hot.delta + seed)),
+        misalignment_mhz=frozen_array(_MHZ * hot.cold),
+        hot_misalignment_mhz=frozen_array(_MHZ * hot.delta),
+        signal_um=frozen_array(um_from_omega(hot.signal)),
+        idler_um=frozen_array(um_from_omega(hot.idler)),
+        reason=frozen_array(_reasons(hot)),
+        pump_um=um_from_omega(hot.pump),
+        pump_w=pump_w,
+        signal_w=signal_w,
+        signal_detuning_mhz=seed * _MHZ,
+        error=ErrorBars(idler_w=bar, efficiency=bar * per_w),
+        **_about(ring, hot, pump_um, pump_w, kerr_shift, "idler powers"),
+    )
+
+
+def _idler_w(ring: Ring, hot: Hot, pump_w: float, signal_w: float, seed: float) -> np.ndarray:
+    """Idler power of each pair; the idler's detuning follows from photon energy."""
+    if hot.oscillating:
+        return np.full(hot.x.shape, np.nan)
+
+    def built(omega: Any, detuning: Any) -> Any:
+        n_group = C_UM_PER_PS * np.asarray(ring.curve.beta_rad_per_um(omega, 1))
+        width, coupling = omega / ring.q_loaded, omega / ring.q_coupling
+        return cavity.build_up(n_group, ring.length_um, width, coupling, detuning)
+
+    build_ups = (
+        built(hot.pump, 0.0),
+        built(hot.signal, seed),
+        built(hot.idler, -(hot.delta + seed)),
+    )
+    return cavity.stimulated_idler_w(
+        hot.gamma, ring.length_um, pump_w, signal_w, build_ups, hot.idler / hot.signal
+    )
+
+
+def _about(
+    ring: Ring, hot: Hot, pump_um: float, pump_w: float, kerr_shift: bool, low_gain: str
+) -> dict[str, Any]:
+    about = ring._about(pump_um=pump_um, kerr_shift=kerr_shift)
+    about["notes"] = _notes(ring, hot, pump_w, low_gain)
+    return about
