@@ -56,10 +56,27 @@ class Lines:
 
 
 def order_range(curve: Curve, radius_um: float) -> tuple[int, int]:
-    """Lowest and highest order in the band; the first is above the second if there is none."""
-    low, high = curve.band_rad_per_ps
-    turns = radius_um * np.asarray(curve.beta_rad_per_um(np.array([low, high])))
-    return math.ceil(turns[0]), math.floor(turns[1])
+    """Lowest and highest order in the band; the first is above the second if there is none.
+
+    Raises
+    ------
+    SolverError
+        When beta does not rise with frequency.
+    """
+    _, turns = _turns(curve, radius_um)
+    return math.ceil(turns[0]), math.floor(turns[-1])
+
+
+def _turns(curve: Curve, radius_um: float) -> tuple[np.ndarray, np.ndarray]:
+    """Frequencies over the band and beta R there, checked to rise."""
+    grid = np.linspace(*curve.band_rad_per_ps, _GUESS_POINTS)
+    turns = radius_um * np.asarray(curve.beta_rad_per_um(grid))
+    if not np.all(np.diff(turns) > 0.0):
+        raise SolverError(
+            f"beta of mode {curve.mode} does not rise all over the band, so its resonances have "
+            "no single order; narrow the band or check the curve"
+        )
+    return grid, turns
 
 
 def find_lines(curve: Curve, radius_um: float, order: Any) -> Lines:
@@ -84,13 +101,7 @@ def find_lines(curve: Curve, radius_um: float, order: Any) -> Lines:
     """
     order = np.asarray(order, dtype=int)
     low, high = curve.band_rad_per_ps
-    grid = np.linspace(low, high, _GUESS_POINTS)
-    turns = radius_um * np.asarray(curve.beta_rad_per_um(grid))
-    if not np.all(np.diff(turns) > 0.0):
-        raise SolverError(
-            f"beta of mode {curve.mode} does not rise all over the band, so its resonances have "
-            "no single order; narrow the band or check the curve"
-        )
+    grid, turns = _turns(curve, radius_um)
     inside = (order >= turns[0]) & (order <= turns[-1])
     omega = np.interp(order, turns, grid)
     rest = np.zeros_like(omega)
