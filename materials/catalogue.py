@@ -5,6 +5,9 @@ which they are fitted, with paper, range, temperature, axis, and records of Kerr
 two-photon absorption and dn/dT, each with its own source. The first record of a kind is
 the one used. A table whose file name ends in ``-x`` is a family of mixtures: its keys
 end in the fraction, as in ``GeO2-SiO2-Fleming1984-x0.1``.
+
+Most older indices were measured relative to air, the newer ones are absolute; the two
+differ by the factor 1.00027, which is left as each paper has it.
 """
 
 from __future__ import annotations

@@ -129,6 +129,7 @@ def _fit(
         residual_max=float(np.max(np.abs(best.residual))),
         covariance=covariance,
         covariance_root=root,
+        alternatives=tuple((w, tuple(float(c) for c in k)) for w, k in best.alternatives),
     )
     return "fitted_resonances", tuple(float(c) for c in best.coefficients), fit, caveats
 

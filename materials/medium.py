@@ -55,6 +55,9 @@ class Fit:
     covariance_root : ndarray, shape (n_coefficients, n_params)
         Column j moves all the coefficients of the formula by the j-th independent
         one-sigma variation; constants held fixed have zero rows.
+    alternatives : tuple of (float, tuple of float)
+        Coefficients of other arrangements of resonances that the points do not rule out,
+        each with its posterior weight.
     """
 
     window_um: tuple[float, float]
@@ -64,6 +67,7 @@ class Fit:
     residual_max: float
     covariance: np.ndarray
     covariance_root: np.ndarray
+    alternatives: tuple[tuple[float, tuple[float, ...]], ...] = ()
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -241,8 +245,10 @@ class Medium:
         -------
         ndarray of float, shape (n_params, order + 1, *omega.shape)
             First-order changes of :meth:`permittivity_series`, independent of each
-            other: the variance of any linear result is the sum of their squares.
-            ``n_params`` is 0 for a medium that was not fitted here.
+            other: the variance of any linear result is the sum of their squares. The
+            last ones stand for other arrangements of resonances that fit about as well
+            (their difference times the root of their weight). ``n_params`` is 0 for a
+            medium that was not fitted here.
         """
         omega = self._checked_omega(omega_rad_per_ps)
         q = formulas.inverse_wavelength(omega, order)
@@ -250,9 +256,12 @@ class Medium:
             return np.zeros((0, *q.shape))
         gradient = formulas.fitted_resonances_gradient(q, self.coefficients)
         out = np.tensordot(self.fit.covariance_root.T, gradient, axes=1)
+        e = formulas.permittivity(self.formula, q, self.coefficients)
+        for weight, coefficients in self.fit.alternatives:
+            other = formulas.permittivity(self.formula, q, coefficients)
+            out = np.concatenate([out, math.sqrt(weight) * (other - e)[None]])
         if self.index_shift != 0.0:
             # eps = (sqrt(e) + shift)^2, hence d eps = (1 + shift/sqrt(e)) de
-            e = formulas.permittivity(self.formula, q, self.coefficients)
             factor = self.index_shift * series.power(e, -0.5)
             factor[0] += 1.0
             out = np.array([series.multiply(factor, row) for row in out])

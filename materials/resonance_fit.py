@@ -21,13 +21,16 @@ from __future__ import annotations
 import itertools
 import math
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from scipy.optimize import least_squares, nnls
 
 #: A further term must lower the information criterion by this much ("very strong").
 _STRONG_EVIDENCE = 10.0
+
+#: Structures of less posterior weight than this are forgotten.
+_SMALLEST_WEIGHT = 1e-4
 
 #: Poles keep this relative distance from the window.
 _MARGIN = 1e-3
@@ -87,6 +90,8 @@ class ResonanceFit:
         independent.
     criterion : float
         Bayesian information criterion; less is better.
+    alternatives : tuple of (float, ndarray)
+        Other structures that the points do not rule out: posterior weight, coefficients.
     """
 
     coefficients: np.ndarray
@@ -95,6 +100,7 @@ class ResonanceFit:
     chi_square: float
     root: np.ndarray
     criterion: float
+    alternatives: tuple[tuple[float, np.ndarray], ...] = ()
 
 
 def structures(terms: int) -> list[Structure]:
@@ -223,14 +229,31 @@ def fit(
     """
     known = sigma is not None
     problem = _Problem(wavelength_um, index, np.ones_like(index) if sigma is None else sigma)
-    if terms is not None:
-        return _best(problem, terms, known)
-    possible = [t for t in (1, 2, 3) if any(_enough(k, index.size) for k in structures(t))]
-    best, *richer = (_best(problem, t, known) for t in possible)
+    wanted = (1, 2, 3) if terms is None else (terms,)
+    tried = [_all(problem, t, known) for t in wanted]
+    best, *richer = (min(fits, key=lambda f: f.criterion) for fits in tried if fits)
     for candidate in richer:
         if candidate.criterion < best.criterion - _STRONG_EVIDENCE:
             best = candidate
-    return best
+    final = problem.refine(best.structure, best.coefficients, _LAST_PASS)
+    chosen = _summary(problem, best.structure, final, known)
+    others = [f for fits in tried for f in fits if f is not best]
+    return replace(chosen, alternatives=_weighted(chosen, others))
+
+
+def _weighted(
+    chosen: ResonanceFit, others: list[ResonanceFit]
+) -> tuple[tuple[float, np.ndarray], ...]:
+    """Posterior weights of the other structures, exp(-criterion/2) normalised; small ones left out.
+
+    A richer structure that contains the chosen one has its own optimum, so the distance
+    between the two says how far the choice itself may be off.
+    """
+    evidence = np.array([chosen.criterion, *(f.criterion for f in others)])
+    weight = np.exp(-0.5 * (evidence - evidence.min()))
+    weight /= weight.sum()
+    pairs = zip(weight[1:], others, strict=True)
+    return tuple((float(w), f.coefficients) for w, f in pairs if w > _SMALLEST_WEIGHT)
 
 
 def _enough(structure: Structure, points: int) -> bool:
@@ -238,8 +261,8 @@ def _enough(structure: Structure, points: int) -> bool:
     return points >= structure.parameters + 2
 
 
-def _best(problem: _Problem, terms: int, known_sigma: bool) -> ResonanceFit:
-    """Structure and start with the least information criterion."""
+def _all(problem: _Problem, terms: int, known_sigma: bool) -> list[ResonanceFit]:
+    """Best fit of each structure of a number of terms that the points can carry."""
     fits = []
     for structure in structures(terms):
         if _enough(structure, problem.index.size):
@@ -247,9 +270,7 @@ def _best(problem: _Problem, terms: int, known_sigma: bool) -> ResonanceFit:
             best = min(refined, key=lambda c: float(np.sum(problem.residual(c) ** 2)))
             best = problem.refine(structure, best, _SECOND_PASS)
             fits.append(_summary(problem, structure, best, known_sigma))
-    chosen = min(fits, key=lambda f: f.criterion)
-    final = problem.refine(chosen.structure, chosen.coefficients, _LAST_PASS)
-    return _summary(problem, chosen.structure, final, known_sigma)
+    return fits
 
 
 def _summary(
