@@ -53,7 +53,7 @@ def bend_note(curve: Any, radius_um: float) -> tuple[str, ...]:
     start = f"the curve is that of {what}, the ring bends to {radius_um:g} um: "
     section = getattr(curve, "section", None)
     width = getattr(section, "width_um", None)
-    if width is None or not curve.mode.endswith("0"):
+    if width is None or curve.mode.lstrip("TEM") != "0":
         why = "its core width is not known" if width is None else f"{curve.mode} has nodes"
         return (start + f"the shift goes as 1/R^2 and is not estimated here ({why})",)
     short, long = curve.band_um

@@ -12,7 +12,7 @@ from __future__ import annotations
 import math
 from collections.abc import Callable
 from dataclasses import dataclass, field, replace
-from typing import Any, NamedTuple
+from typing import Any
 
 import numpy as np
 
@@ -24,24 +24,12 @@ from phasematch.channel_results import ChannelMap, ConversionBand, PairFlux
 from phasematch.conversion import BandEdges, find_band
 from phasematch.mixing import LASER_CAUTION, Curve, error_bar
 from phasematch.pairs import SignalRange, beyond_note, integrate_flux, signal_range
+from phasematch.waves import Waves, density, log_photons, mix, photons, reasons, weak
 
 __all__ = ["Channel"]
 
 _DB = 10.0 / math.log(10.0)
 _WEAK = 0.1  # gamma P L above which the weak-pump forms get a note
-
-
-class Waves(NamedTuple):
-    """Frequencies, mismatch and gammas of pump, signal and idler, broadcast together."""
-
-    pump: np.ndarray
-    signal: np.ndarray
-    idler: np.ndarray
-    dbeta_per_m: np.ndarray
-    kappa_per_m: np.ndarray
-    gamma_signal: np.ndarray
-    gamma_idler: np.ndarray
-    pump_w: np.ndarray
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -117,7 +105,7 @@ class Channel:
         """
         waves = self._waves(pump_um, signal_um, pump_w)
         passed = math.exp(-self.loss_per_m * self.length_m)
-        return (passed + self._photons(waves))[()]
+        return (passed + photons(waves, self.loss_per_m, self.length_m))[()]
 
     def idler_efficiency(self, pump_um: Any, signal_um: Any, pump_w: Any) -> Any:
         """Idler power out over signal power in (a ratio, not dB).
@@ -133,7 +121,7 @@ class Channel:
         which holds for a weak pump, gamma P L well below 1, and equal loss.
         """
         waves = self._waves(pump_um, signal_um, pump_w)
-        return (waves.idler / waves.signal * self._photons(waves))[()]
+        return (waves.idler / waves.signal * photons(waves, self.loss_per_m, self.length_m))[()]
 
     def low_gain_efficiency(self, pump_um: Any, signal_um: Any, pump_w: Any) -> Any:
         """Idler power out over signal power in to lowest order in the pump power.
@@ -142,7 +130,9 @@ class Channel:
         `idler_efficiency` with it. Parameters and Raises as for `mismatch_per_m`.
         """
         waves = self._waves(pump_um, signal_um, pump_w)
-        return (waves.idler / waves.signal * self._weak(waves).stimulated)[()]
+        return (
+            waves.idler / waves.signal * weak(waves, self.loss_per_m, self.length_m).stimulated
+        )[()]
 
     def pair_flux_density(
         self, pump_um: Any, signal_um: Any, pump_w: Any, *, counted: str = "coincidences"
@@ -163,7 +153,9 @@ class Channel:
             As for `mismatch_per_m`; or for another word in ``counted``.
         """
         _check_counted(counted)
-        return self._density(self._waves(pump_um, signal_um, pump_w), counted)[()]
+        return density(
+            self._waves(pump_um, signal_um, pump_w), self.loss_per_m, self.length_m, counted
+        )[()]
 
     def pair_flux_per_s(
         self,
@@ -338,7 +330,7 @@ class Channel:
             signal_um=frozen_array(signals),
             idler_um=frozen_array(mixing.idler_um(pumps[:, None], signals)),
             **arrays,
-            reason=frozen_array(self._reasons(waves)),
+            reason=frozen_array(reasons(self.curve, waves)),
             pump_w=pump_w,
             error=ErrorBars(dict(zip(names, bars, strict=True))),
             inputs=self._inputs(),
@@ -373,83 +365,17 @@ class Channel:
         signal_um = inputs.numbers("signal_um", signal_um, "um")
         power = inputs.numbers("pump_w", pump_w, "W", zero_allowed=True)
         gamma = mixing.gamma_or_nan(self.curve, pump_um)
-        return self._at(omega_from_um(pump_um), omega_from_um(signal_um), gamma, power)
-
-    def _at(self, pump: Any, signal: Any, gamma: Any, power: Any) -> Waves:
-        """The waves of given frequencies in rad/ps."""
-        idler = np.asarray(mixing.idler_omega(pump, signal))
-        idler = np.where(idler > 0.0, idler, np.nan)
-        dbeta = mixing.linear_mismatch_per_m(self.curve, pump, signal)
-        gamma = np.where((power == 0.0) & np.isnan(gamma), 0.0, gamma)  # no power: not needed
-        gamma_s = mixing.scaled_gamma(gamma, signal, pump)
-        gamma_i = mixing.scaled_gamma(gamma, idler, pump)
-        kappa = mixing.total_mismatch_per_m(dbeta, gamma_s, gamma_i, gamma, power)
-        return Waves(pump, signal, idler, dbeta, kappa, gamma_s, gamma_i, power)
-
-    def _weak(self, waves: Waves) -> mixing.WeakPhotons:
-        weak = mixing.weak_photons_m2(waves.dbeta_per_m, self.loss_per_m, self.length_m)
-        front = waves.gamma_signal * waves.gamma_idler * np.square(waves.pump_w)
-        return mixing.WeakPhotons(*(front * part for part in weak))
-
-    def _photons(self, waves: Waves) -> np.ndarray:
-        """Idler photons out per signal photon in."""
-        if self.loss_db_per_cm:
-            return self._weak(waves).stimulated
-        return mixing.idler_photons(
-            waves.kappa_per_m, waves.gamma_signal, waves.gamma_idler, waves.pump_w, self.length_m
-        )
-
-    def _log_photons(self, waves: Waves) -> np.ndarray:
-        """Natural logarithm of `_photons`, finite for any gain."""
-        if self.loss_db_per_cm:
-            with np.errstate(divide="ignore"):
-                return np.log(self._weak(waves).stimulated)
-        return mixing.log_idler_photons(
-            waves.kappa_per_m, waves.gamma_signal, waves.gamma_idler, waves.pump_w, self.length_m
-        )
-
-    def _density(self, waves: Waves, counted: str) -> np.ndarray:
-        if not self.loss_db_per_cm:
-            return self._photons(waves)
-        weak = self._weak(waves)
-        return weak.singles if counted == "singles" else weak.coincidences
+        return mix(self.curve, omega_from_um(pump_um), omega_from_um(signal_um), gamma, power)
 
     def _stacked(self, pump_um: Any, signal_um: Any, pump_w: float) -> np.ndarray:
         """Mismatch, gain in dB, efficiency in dB, stacked along a first axis."""
         waves = self._waves(pump_um, signal_um, pump_w)
-        log_photons = self._log_photons(waves)
+        made = log_photons(waves, self.loss_per_m, self.length_m)
         with np.errstate(invalid="ignore"):  # NaN stays NaN
-            gain = _DB * np.logaddexp(-self.loss_per_m * self.length_m, log_photons)
-        efficiency = _DB * (log_photons + np.log(waves.idler / waves.signal))
+            gain = _DB * np.logaddexp(-self.loss_per_m * self.length_m, made)
+        efficiency = _DB * (made + np.log(waves.idler / waves.signal))
         efficiency = np.where(np.isfinite(efficiency), efficiency, np.nan)
         return np.stack([waves.kappa_per_m, gain, efficiency])
-
-    def _reasons(self, waves: Waves) -> np.ndarray:
-        """Why a point of a map is not there, "" where it is."""
-        shape = waves.dbeta_per_m.shape
-        pump = np.broadcast_to(mixing.inside(self.curve, waves.pump), shape)
-        signal = np.broadcast_to(mixing.inside(self.curve, waves.signal), shape)
-        idler = mixing.inside(self.curve, waves.idler)
-        gamma = np.broadcast_to(np.isfinite(waves.gamma_signal), shape)
-        return np.select(
-            [
-                ~pump,
-                ~signal,
-                np.isnan(waves.idler),
-                ~idler,
-                ~gamma,
-                np.broadcast_to(waves.pump_w == 0.0, shape),
-            ],
-            [
-                "pump outside the solved band",
-                "signal outside the solved band",
-                "no idler: the signal has more than twice the pump's frequency",
-                "idler outside the solved band",
-                "gamma not known",
-                "no pump power: no idler",
-            ],
-            default="",
-        )
 
     def _spectrum(
         self, pump_um: float, pump_w: float, counted: str
@@ -460,8 +386,10 @@ class Channel:
         power = np.asarray(pump_w)
 
         def spectrum(signal: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
-            waves = self._at(pump, signal, gamma, power)
-            return self._density(waves, counted), 0.5 * self.length_m * waves.kappa_per_m
+            waves = mix(self.curve, pump, signal, gamma, power)
+            return density(
+                waves, self.loss_per_m, self.length_m, counted
+            ), 0.5 * self.length_m * waves.kappa_per_m
 
         return spectrum
 
@@ -480,13 +408,15 @@ class Channel:
         power = np.asarray(pump_w)
 
         def log_efficiency(signal: Any) -> tuple[np.ndarray, np.ndarray]:
-            waves = self._at(pump, np.asarray(signal, dtype=float), gamma, power)
+            waves = mix(self.curve, pump, np.asarray(signal, dtype=float), gamma, power)
             if pump_w == 0.0:
-                weak = mixing.weak_photons_m2(waves.dbeta_per_m, self.loss_per_m, self.length_m)
+                shape = mixing.weak_photons_m2(waves.dbeta_per_m, self.loss_per_m, self.length_m)
                 with np.errstate(divide="ignore"):
-                    level = np.log(weak.stimulated) + 2.0 * np.log(waves.idler / pump)
+                    level = np.log(shape.stimulated) + 2.0 * np.log(waves.idler / pump)
             else:
-                level = self._log_photons(waves) + np.log(waves.idler / waves.signal)
+                level = log_photons(waves, self.loss_per_m, self.length_m) + np.log(
+                    waves.idler / waves.signal
+                )
             return _DB * level, 0.5 * self.length_m * waves.kappa_per_m
 
         return find_band(self.curve, pump, log_efficiency, drop_db, absolute=pump_w > 0.0)

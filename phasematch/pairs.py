@@ -107,18 +107,20 @@ def beyond_note(spectrum: Spectrum, span: SignalRange, flux: float) -> tuple[str
     Beyond the last fringes the density is half its envelope on average and falls as the
     inverse square of the mismatch, taken to grow as the square of the offset.
     """
-    points = np.linspace(span.low, span.high, 65)[-9:]
-    density, phase = spectrum(points)
-    if not np.isfinite(flux) or flux <= 0.0:
+    if span.empty or not np.isfinite(flux) or flux <= 0.0:
         return ()
-    if abs(phase[-1]) < 2 * math.pi:
+    width = span.high - span.low
+    _, phase = spectrum(np.array([span.high - 1e-3 * width, span.high]))
+    if abs(phase[1]) < 2 * math.pi:
         return (
             "the spectrum has not fallen at the edge of the solved band, so the flux is what the "
             "band lets through; widen the band for the whole",
         )
-    with np.errstate(divide="ignore"):
-        envelope = density[-1] / np.sin(phase[-1]) ** 2
-    tail = 0.5 * envelope * (span.high - span.low) / 3.0 * _PER_S
+    # the last fringe, a turn of pi, gives the envelope
+    fringe = math.pi * 1e-3 * width / max(abs(phase[1] - phase[0]), 1e-300)
+    last = span.high - np.linspace(0.0, min(fringe, 0.25 * width), 65)
+    envelope = float(np.max(spectrum(last)[0]))
+    tail = 0.5 * envelope * width / 3.0 * _PER_S
     if not np.isfinite(tail) or tail < 1e-6 * flux:
         return ()
     share = 100.0 * tail / flux

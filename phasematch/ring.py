@@ -159,11 +159,12 @@ class Ring:
         scale = np.array([1e3, 1e6, 1e9, 1e9]) / TWO_PI
         values = scale * self._coefficients(self.curve, order)
         bars = error_bar(self.curve, lambda c: scale * self._coefficients(c, order))
+        pump, pump_bars = self._pump(order)
         return RingDispersion(
             pump_order=order,
-            pump_um=self._pump_um(order),
+            pump_um=pump[0],
             **dict(zip(names, values.tolist(), strict=True)),
-            error=ErrorBars(dict(zip(names, bars.tolist(), strict=True))),
+            error=ErrorBars(dict(zip(names, bars.tolist(), strict=True)), pump_um=pump_bars[0]),
             **self._about(pump_um=pump_um),
         )
 
@@ -184,14 +185,16 @@ class Ring:
             return _MHZ * (lines.apart(slice(None), count) - d1 * mu)
 
         lines = self._lines(order + mu)
+        pump, pump_bars = self._pump(order)
+        bars = {"integrated_mhz": error_bar(self.curve, integrated), "pump_um": pump_bars[0]}
         return IntegratedDispersion(
             mu=frozen_array(mu),
             frequency_thz=frozen_array(lines.omega_rad_per_ps / TWO_PI),
             integrated_mhz=frozen_array(integrated(self.curve)),
             reason=frozen_array(_beyond(np.isfinite(lines.omega_rad_per_ps))),
             pump_order=order,
-            pump_um=self._pump_um(order),
-            error=ErrorBars(integrated_mhz=error_bar(self.curve, integrated)),
+            pump_um=pump[0],
+            error=ErrorBars(bars),
             **self._about(pump_um=pump_um),
         )
 
@@ -233,7 +236,7 @@ class Ring:
         width = 0.5e6 * (values["signal_thz"] + values["idler_thz"]) / self.q_loaded
         miss = values["misalignment_mhz"]
         bars["misalignment_linewidths"] = bars["misalignment_mhz"] / width
-        centre = find_lines(self.curve, self.radius_um, [order]).omega_rad_per_ps
+        pump, pump_bars = self._pump(order)
         columns: dict[str, Any] = {name: frozen_array(v) for name, v in values.items()}
         return PairTable(
             mu=frozen_array(mu),
@@ -243,9 +246,9 @@ class Ring:
             aligned=frozen_array(np.abs(miss) <= width),
             reason=frozen_array(_beyond(np.isfinite(miss))),
             pump_order=order,
-            pump_um=float(um_from_omega(centre[0])),
-            pump_thz=float(centre[0] / TWO_PI),
-            error=ErrorBars(bars),
+            pump_um=pump[0],
+            pump_thz=pump[1],
+            error=ErrorBars({**bars, "pump_um": pump_bars[0], "pump_thz": pump_bars[1]}),
             **self._about(pump_um=pump_um),
         )
 
@@ -419,8 +422,14 @@ class Ring:
         nearest = round(self.radius_um * float(self.curve.beta_rad_per_um(omega)))
         return int(min(max(nearest, orders[0]), orders[-1]))
 
-    def _pump_um(self, order: int) -> float:
-        return float(um_from_omega(self._lines([order]).omega_rad_per_ps[0]))
+    def _pump(self, order: int) -> tuple[list[float], list[float]]:
+        """Wavelength in um and frequency in THz of a resonance, and their error bars."""
+
+        def both(curve: Curve) -> np.ndarray:
+            omega = find_lines(curve, self.radius_um, [order]).omega_rad_per_ps[0]
+            return np.array([um_from_omega(omega), omega / TWO_PI])
+
+        return both(self.curve).tolist(), error_bar(self.curve, both).tolist()
 
     def _coefficients(self, curve: Curve, order: int) -> np.ndarray:
         """D1 .. D4 in rad/ps about a resonance."""

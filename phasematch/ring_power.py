@@ -101,14 +101,14 @@ def _reasons(hot: Hot) -> np.ndarray:
     )
 
 
-def _notes(ring: Ring, hot: Hot, pump_w: float, low_gain: str) -> tuple[str, ...]:
+def _notes(ring: Ring, hot: Hot, low_gain: str) -> tuple[str, ...]:
     notes = list(ring.notes)
     top = np.nanmax(hot.x, initial=0.0)
     if hot.oscillating:
         notes.append("at or above threshold: no rates are given, the pump is no longer what it was")
     elif top > _HIGH:
         notes.append(f"x reaches {top:.2g} of the threshold's 1: {low_gain} hold at low gain")
-    return (*notes, LASER_CAUTION) if pump_w > 0.0 else tuple(notes)
+    return (*notes, LASER_CAUTION)  # thresholds are powers, also where the pump is off
 
 
 def spontaneous(
@@ -124,6 +124,11 @@ def spontaneous(
         now = heat_up(other, order, pump_w, count, kerr_shift)
         return np.vstack([_rates(other, now), _MHZ * now.cold, _MHZ * now.delta])
 
+    def of_the_pump(curve: Curve) -> np.ndarray:
+        other = ring._with(curve)
+        now = heat_up(other, order, pump_w, count, kerr_shift)
+        return np.array([now.photons, other.build_up(um_from_omega(now.pump)), _MHZ * now.gain])
+
     hot = heat_up(ring, order, pump_w, count, kerr_shift)
     names = (
         "pairs_inside_per_s",
@@ -136,6 +141,8 @@ def spontaneous(
         "hot_misalignment_mhz",
     )
     values, bars = numbers(ring.curve), error_bar(ring.curve, numbers)
+    pump = ("photons_inside", "build_up", "kerr_shift_mhz")
+    pump_bars = zip(pump, error_bar(ring.curve, of_the_pump).tolist(), strict=True)
     columns: dict[str, Any] = {n: frozen_array(v) for n, v in zip(names, values, strict=True)}
     return PairRates(
         mu=frozen_array(np.arange(1, count + 1)),
@@ -149,8 +156,8 @@ def spontaneous(
         photons_inside=hot.photons,
         build_up=float(ring.build_up(um_from_omega(hot.pump))),
         kerr_shift_mhz=_MHZ * hot.gain,
-        error=ErrorBars(dict(zip(names, bars, strict=True))),
-        **_about(ring, hot, pump_um, pump_w, kerr_shift, "coincidences"),
+        error=ErrorBars({**dict(zip(names, bars, strict=True)), **dict(pump_bars)}),
+        **_about(ring, hot, pump_um, kerr_shift, "coincidences"),
     )
 
 
@@ -195,7 +202,7 @@ def stimulated(
         signal_w=signal_w,
         signal_detuning_mhz=seed * _MHZ,
         error=ErrorBars(idler_w=bar, efficiency=bar * per_w),
-        **_about(ring, hot, pump_um, pump_w, kerr_shift, "idler powers"),
+        **_about(ring, hot, pump_um, kerr_shift, "idler powers"),
     )
 
 
@@ -219,9 +226,7 @@ def _idler_w(ring: Ring, hot: Hot, pump_w: float, signal_w: float, seed: float) 
     )
 
 
-def _about(
-    ring: Ring, hot: Hot, pump_um: float, pump_w: float, kerr_shift: bool, low_gain: str
-) -> dict[str, Any]:
+def _about(ring: Ring, hot: Hot, pump_um: float, kerr_shift: bool, low_gain: str) -> dict[str, Any]:
     about = ring._about(pump_um=pump_um, kerr_shift=kerr_shift)
-    about["notes"] = _notes(ring, hot, pump_w, low_gain)
+    about["notes"] = _notes(ring, hot, low_gain)
     return about

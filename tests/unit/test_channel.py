@@ -111,6 +111,8 @@ def test_outside_the_band_is_nan_with_the_reason_kept(channel):
         ["", "idler outside the solved band", "signal outside the solved band"],
         ["pump outside the solved band"] * 3,
     ]
+    lossy = dataclasses.replace(channel, loss_db_per_cm=1.0).map([1.55, 3.0], [1.5, 0.5], 0.1)
+    assert np.array_equal(np.isnan(lossy.efficiency_db), lossy.reason != "")
     missing = np.isnan(table.mismatch_per_m)
     assert np.array_equal(missing, table.reason != "")
     assert np.array_equal(np.isnan(table.gain_db), missing)
@@ -258,7 +260,11 @@ def test_pair_flux_result_names_what_it_counts_and_where():
     assert flux.error["flux_per_s"] == pytest.approx(0.005 * flux.flux_per_s, rel=0.05)
     assert flux.quadrature_error_per_s < 1e-8 * flux.flux_per_s
     assert LASER_CAUTION in flux.notes
-    assert any("beyond the solved band" in note for note in flux.notes)
+    # the cut-off share against the flux of a band twice as wide (itself short of an eighth of it)
+    wide = Channel(curve(beta2=-100.0, gamma=3.0, half_band_thz=120.0), length_mm=10)
+    more = 100 * (wide.pair_flux_per_s(1.55, 1e-3) / flux.flux_per_s - 1.0)
+    (said,) = [note for note in flux.notes if "beyond the solved band" in note]
+    assert float(said.split("about ")[1].split(" %")[0]) == pytest.approx(more / 0.875, rel=0.3)
     lossy = Channel(best, length_mm=10, loss_db_per_cm=2.0)
     assert lossy.pair_flux(1.55, 1e-3).counted == "coincidences"
     assert lossy.pair_flux(1.55, 1e-3, counted="singles").counted == "singles"

@@ -228,7 +228,8 @@ def test_spontaneous_follows_the_hot_misalignment():
     cold = ring.spontaneous(1.55, 1e-3, 20, kerr_shift=False)
     np.testing.assert_allclose(cold.hot_misalignment_mhz, cold.misalignment_mhz)
     assert LASER_CAUTION in rates.notes
-    assert LASER_CAUTION not in ring.spontaneous(1.55, 0.0, 2).notes
+    assert LASER_CAUTION in ring.spontaneous(1.55, 0.0, 2).notes  # its thresholds are powers
+    assert LASER_CAUTION not in ring.pairs(1.55, 2).notes
 
 
 def test_rates_stop_at_threshold_with_the_reason():
