@@ -12,6 +12,7 @@ every number goes out with its error bar::
 Neither click nor Matplotlib is loaded by importing this package.
 """
 
+import phasematch.guard  # noqa: F401 - first: it looks for hidden packages
 from phasematch.channel import Channel
 from phasematch.channel_results import ChannelMap, ConversionBand, PairFlux
 from phasematch.mixing import LASER_CAUTION, Curve, error_bar

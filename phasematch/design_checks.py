@@ -160,11 +160,12 @@ def _wavelengths_in_band(values: Values) -> Iterator[str]:
         value = values.get(table, {}).get(key)
         if value is not None and not start <= value <= end:
             yield f"{table}.{key} = {value:g}: must be inside the band, {start:g} to {end:g} um"
-    for key in ("map_pump_um", "map_signal_um"):
-        value = values.get("channel", {}).get(key)
+    double = (("channel", "map_pump_um"), ("channel", "map_signal_um"), ("ring", "map_pump_um"))
+    for table, key in double:
+        value = values.get(table, {}).get(key)
         if value is not None and not start <= value[0] < value[1] <= end:
             yield (
-                f"channel.{key} = [{value[0]:g}, {value[1]:g}]: must rise and lie inside the "
+                f"{table}.{key} = [{value[0]:g}, {value[1]:g}]: must rise and lie inside the "
                 f"band, {start:g} to {end:g} um"
             )
 

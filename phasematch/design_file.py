@@ -38,6 +38,11 @@ class Design:
     tables: DesignTables
     source: str
 
+    @property
+    def reference_um(self) -> float:
+        """Wavelength at which the modes are listed and labelled, um."""
+        return float(self.tables.mode.wavelength_um or self.tables.band.from_um)
+
     def as_dict(self) -> dict[str, Any]:
         """All keys that have a value, as plain nested mappings."""
         return self.tables.model_dump(exclude_none=True)
@@ -229,4 +234,7 @@ def _with_defaults(tables: DesignTables) -> DesignTables:
                 "map_signal_um": channel.map_signal_um or (band.from_um, band.to_um),
             }
         )
+    if ring is not None:
+        whole_band = (band.from_um, band.to_um)
+        changes["ring"] = ring.model_copy(update={"map_pump_um": ring.map_pump_um or whole_band})
     return tables.model_copy(update=changes)

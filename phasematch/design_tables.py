@@ -31,13 +31,15 @@ def number(
 ) -> Any:
     """A finite number from ``low`` to ``high``; ``above`` or ``below`` leave an end out."""
     ends = f"{'above' if above else 'from'} {low:g} {'to below' if below else 'to'} {high:g}"
-    limits = {("gt" if above else "ge"): low, ("lt" if below else "le"): high}
     return Field(
         default,
         description=about,
         allow_inf_nan=False,
         json_schema_extra={"allowed": f"a number {ends}{' ' + unit if unit else ''}"},
-        **limits,
+        gt=low if above else None,
+        ge=None if above else low,
+        lt=high if below else None,
+        le=None if below else high,
     )
 
 
@@ -130,7 +132,7 @@ class ChannelTable(Table):
     length_mm: Number = number("length", "mm", 0.0, 1e6, above=True)
     loss_db_per_cm: Number = number("propagation loss", "dB/cm", 0.0, 100.0, 0.0)
     pump_um: Number = number("pump wavelength", "um", 0.1, 30.0)
-    pump_w: Number = number("pump power in the guide", "W", 0.0, 1e4)
+    pump_w: Number = number("pump power in the guide", "W", 0.0, 1e4, above=True)
     map_pump_um: tuple[Number, Number] | None = text(
         "pump axis of the map; default: the pump and 2 % to either side",
         "two wavelengths [from, to] in um",
@@ -151,7 +153,11 @@ class RingTable(Table):
     pump_um: Number = number("the pump is the resonance nearest to this", "um", 0.1, 30.0)
     pump_w: Number = number("pump power in the bus", "W", 0.0, 1e3, 0.0)
     pairs: Whole = whole("resonance pairs on either side of the pump", 1, 5000, 60)
-    map_pumps: Whole = whole("pump resonances in the detuning map", 1, 2001, 41)
+    map_pump_um: tuple[Number, Number] | None = text(
+        "pump resonances of the detuning map; default: the whole band",
+        "two wavelengths [from, to] in um",
+        None,
+    )
 
 
 class OutputTable(Table):

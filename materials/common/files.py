@@ -163,26 +163,24 @@ def _axes(variables: Sequence[Variable]) -> dict[str, int]:
 # ---------------------------------------------------------------- CSV
 
 
-def write_csv(
-    path: str | os.PathLike[str],
+def csv_text(
     variables: Sequence[Variable],
     *,
     title: str,
     inputs: Mapping[str, Any] | None = None,
     notes: Sequence[str] = (),
     provenance: Mapping[str, Any] | None = None,
-) -> None:
-    """Write variables as one table, whole or not at all.
+) -> str:
+    """Variables as the text of one table.
 
     Scalars go to the comment lines; where there is nothing else they are a table of one
     row. Everything else becomes a column, repeated along the axes it does not have: a map
-    over two axes comes out with one row per point. An error
-    bar is the column ``<name>_error``; complex values are two columns, ``_re`` and ``_im``.
+    over two axes comes out with one row per point. A short list along an axis of its own
+    goes to the comment lines too. An error bar is the column ``<name>_error``; complex
+    values are two columns, ``_re`` and ``_im``.
 
     Parameters
     ----------
-    path : path
-        Target file.
     variables : sequence of Variable
         Columns in their order. A dimension without a variable of its name becomes a
         column of the numbers 0, 1, 2 ...
@@ -195,17 +193,14 @@ def write_csv(
 
     Raises
     ------
-    StorageError
-        The file cannot be written.
     InputError
         Two variables disagree about the length of an axis.
     """
-    lengths = _axes(variables)
-    scalars = [v for v in variables if not v.dims and lengths]
-    tabled = [v for v in _with_counters(variables, lengths) if v.dims or not lengths]
-    tabled.sort(key=lambda v: v.dims != (v.name,))  # stable: axes first
+    lengths = _table_axes(variables)
+    aside = [v for v in variables if not set(v.dims) <= set(lengths) or (lengths and not v.dims)]
+    tabled = _with_counters([v for v in variables if v not in aside], lengths)
     text = io.StringIO()
-    for line in _comments(title, scalars, tabled, inputs or {}, notes, provenance or {}):
+    for line in _comments(title, aside, tabled, inputs or {}, notes, provenance or {}):
         text.write("# " + line.replace("\n", " ") + "\n")
     columns = {
         name: np.broadcast_to(values, tuple(lengths.values())).ravel()
@@ -216,7 +211,23 @@ def write_csv(
     writer.writerow(columns)
     rows = zip(*([_cell(x) for x in column.tolist()] for column in columns.values()), strict=True)
     writer.writerows(rows)
-    write_text(path, text.getvalue())
+    return text.getvalue()
+
+
+def write_csv(path: str | os.PathLike[str], variables: Sequence[Variable], **about: Any) -> None:
+    """Write a table of `csv_text`, whole or not at all; raises `StorageError` as well."""
+    write_text(path, csv_text(variables, **about))
+
+
+def _table_axes(variables: Sequence[Variable]) -> dict[str, int]:
+    """Axes of the table: those of the largest array and all that are tied to them."""
+    lengths = _axes(variables)
+    chosen: set[str] = set(max(variables, key=lambda v: np.size(v.values)).dims)
+    for _ in lengths:
+        for variable in variables:
+            if chosen & set(variable.dims):
+                chosen |= set(variable.dims)
+    return {dim: length for dim, length in lengths.items() if dim in chosen}
 
 
 def _with_counters(variables: Sequence[Variable], lengths: dict[str, int]) -> list[Variable]:
@@ -253,7 +264,7 @@ def _parts(variable: Variable) -> Iterator[tuple[str, np.ndarray]]:
 
 def _comments(
     title: str,
-    scalars: Sequence[Variable],
+    aside: Sequence[Variable],
     tabled: Sequence[Variable],
     inputs: Mapping[str, Any],
     notes: Sequence[str],
@@ -262,11 +273,14 @@ def _comments(
     yield title
     for name, value in flatten(plain(inputs)).items():
         yield f"input {name} = {json.dumps(value)}"
-    for scalar in scalars:
-        for name, values in _parts(scalar):
-            yield f"value {name} = {_cell(values.item())} [{scalar.unit}]"
+    for variable in aside:
+        for name, values in _parts(variable):
+            cells = [_cell(value) for value in values.ravel().tolist()]
+            shown = f"[{', '.join(cells)}]" if variable.dims else cells[0]
+            yield f"value {name} = {shown}" + (f" [{variable.unit}]" if variable.unit else "")
     for variable in tabled:
-        yield f"column {variable.name}: {variable.long_name} [{variable.unit}]"
+        unit = f" [{variable.unit}]" if variable.unit else ""
+        yield f"column {variable.name}: {variable.long_name}{unit}"
     for note in notes:
         yield f"note {note}"
     for name, value in flatten(plain(provenance)).items():
@@ -297,7 +311,7 @@ def write_hdf5(
     Root attributes: ``title``, ``inputs`` and ``provenance`` (JSON), ``notes`` (one a
     line). Complex values are ``_re`` and ``_im`` pairs, booleans int8 (0 and 1), strings
     UTF-8; an error bar is the dataset ``<name>_error``. Parameters and errors as for
-    `write_csv`.
+    `csv_text`, and `StorageError`.
     """
     import h5py  # here, because reading it takes longer than the rest of this package
 

@@ -13,12 +13,13 @@ from materials.common.files import Variable
 _ROWS_SHOWN = 8
 
 
-def format_number(value: Any, bar: float | None = None, *, digits: int = 6) -> str:
+def format_number(value: Any, bar: float | None = None, *, digits: int = 6, most: int = 16) -> str:
     """A number as text, its error bar in brackets behind the last digits.
 
-    The bar is rounded up, to one digit, or two where it starts with a 1; a bar of 1 or
-    more is written out behind ``+-``. Without a bar (None, 0 or NaN) ``digits``
-    significant digits are shown.
+    The bar is rounded up, to one digit, or two where it starts with a 1; one of 1 or more
+    is written out behind ``+-``, and from a million on the number has a power of ten.
+    Without a bar (None, 0 or NaN) ``digits`` significant digits are shown. At most
+    ``most`` digits are shown; a bar below the last of them counts as one of it.
 
     Examples
     --------
@@ -26,6 +27,8 @@ def format_number(value: Any, bar: float | None = None, *, digits: int = 6) -> s
     '1.83454380(10)'
     >>> format_number(-1234.567, 23.4)
     '-1230 +- 30'
+    >>> format_number(29667950.0, 144.0)
+    '2.966795(15)e+07'
     >>> format_number(1.23456e-7, 3e-11)
     '1.2346(3)e-07'
     >>> format_number(88.07, None)
@@ -36,20 +39,25 @@ def format_number(value: Any, bar: float | None = None, *, digits: int = 6) -> s
     value = float(value)
     if bar is None or not math.isfinite(value) or not (0 < bar < math.inf):
         return f"{value:.{digits}g}"
+    last = math.floor(math.log10(abs(value))) + 1 - most if value else -308
+    units, place = (1, last) if bar <= 10.0**last else _rounded_up(bar)
+    size = max(math.floor(math.log10(abs(value))) if value else 0, place)
+    if bar >= 1 and size < 6:
+        return f"{round(value, -place):.{max(0, -place)}f} +- {units * 10.0**place:g}"
+    if size >= 6 or (size < -3 and place < -4):  # too large or too small to write out
+        return f"{value / 10.0**size:.{size - place}f}({units})e{size:+03d}"
+    return f"{value:.{-place}f}({units})"
+
+
+def _rounded_up(bar: float) -> tuple[int, int]:
+    """A bar as a whole number of powers of ten: 10 to 19, or 2 to 9."""
     place = math.floor(math.log10(bar))
     leading = bar / 10.0**place
     place -= 1 if leading < 1.9 else 0
     units = math.ceil(bar / 10.0**place * (1 - 1e-9))
-    if units >= 100 or (units == 10 and leading >= 1.9):
-        units, place = units // 10, place + 1
-    if bar >= 1:
-        return f"{round(value, -place):.{max(0, -place)}f} +- {units * 10.0**place:g}"
-    size = max(math.floor(math.log10(abs(value))) if value else 0, place)
-    if size - place > 15:  # below the rounding of the value itself
-        return f"{value:.16g} +- {bar:.0e}"
-    if size < -3 and place < -4:  # too small to write out
-        return f"{value / 10.0**size:.{size - place}f}({units})e{size:+03d}"
-    return f"{value:.{-place}f}({units})"
+    if units == 10 and leading >= 1.9:
+        units, place = 1, place + 1
+    return units, place
 
 
 def printed(title: str, variables: Sequence[Variable], notes: Sequence[str] = ()) -> str:

@@ -33,7 +33,7 @@ from typing import Any
 
 import numpy as np
 
-from materials.common.files import Variable, plain, write_csv, write_hdf5
+from materials.common.files import Variable, csv_text, plain, write_csv, write_hdf5
 from materials.common.printing import format_number, printed
 
 __all__ = [
@@ -249,6 +249,10 @@ class Result:
     def to_csv(self, path: str | os.PathLike[str]) -> None:
         """Write the result as a table with its units and inputs; see `files.write_csv`."""
         write_csv(path, self.variables(), **self._about())
+
+    def csv_text(self) -> str:
+        """The text that `to_csv` writes."""
+        return csv_text(self.variables(), **self._about())
 
     def to_hdf5(self, path: str | os.PathLike[str]) -> None:
         """Write the result as HDF5 that netCDF-4 readers open; see `files.write_hdf5`."""

@@ -128,6 +128,16 @@ def test_scalars_alone_are_one_row(tmp_path):
     ]
 
 
+def test_a_list_apart_from_the_table_goes_to_the_header(tmp_path):
+    w = Variable("w_um", np.array([1.0, 2.0, 3.0]), ("w_um",), "um", "wavelength")
+    for zeros in ([], [1.5], [1.2, 1.7]):
+        zero = Variable("zero_um", np.array(zeros), ("crossing",), "um", "zero dispersion")
+        write_csv(tmp_path / "a.csv", [zero, w], title="curve")
+        table = pandas.read_csv(tmp_path / "a.csv", comment="#")
+        assert table.to_dict("list") == {"w_um": [1.0, 2.0, 3.0]}
+        assert f"# value zero_um = {zeros} [um]" in (tmp_path / "a.csv").read_text()
+
+
 def test_empty_table(tmp_path):
     column = Variable("zero_um", np.array([]), ("crossing",), "um", "zero dispersion")
     write_hdf5(tmp_path / "a.h5", [column], title="none")

@@ -57,11 +57,18 @@ def curve(count=3, **more):
         (np.inf, 1e-3, "inf"),
         (7, 1.0, "7"),
         ("TE0", None, "TE0"),
-        (1.0, 3e-19, "1 +- 3e-19"),
+        (1.0, 3e-19, "1.000000000000000(1)"),
+        (29667950.0, 144.0, "2.966795(15)e+07"),
     ],
 )
 def test_format_number(value, bar, text):
     assert format_number(value, bar) == text
+
+
+def test_format_number_with_fewer_digits():
+    """The bar grows to the last digit shown, never the other way round."""
+    assert format_number(1.506530411, 1.2e-8, most=8) == "1.5065304(1)"
+    assert format_number(1.506530411, 1.2e-5, most=8) == "1.506530(12)"
 
 
 @pytest.mark.parametrize("seed", range(3))

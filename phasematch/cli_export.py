@@ -1,0 +1,133 @@
+"""The verbs ``idlermap export curve``, ``betas`` and ``taper``: tables for other tools."""
+
+from __future__ import annotations
+
+from typing import Any
+
+import click
+import numpy as np
+
+from materials.common.results import Result
+from phasematch.cli_parts import (
+    FAILED_POINTS,
+    check_file,
+    design_argument,
+    notes,
+    progress,
+    read,
+    save,
+    say,
+)
+
+
+@click.group()
+def export() -> None:
+    """Write tables for circuit, layout and propagation tools.
+
+    Each goes to the file of -o, or to stdout as CSV.
+    """
+
+
+def _target(function: Any) -> Any:
+    file = click.option("-o", "--output", help="File to write (.csv or .h5).")
+    again = click.option("--replace", is_flag=True, help="Replace an existing file.")
+    return file(again(function))
+
+
+def _hand_over(result: Result, output: str | None) -> None:
+    """The table to its file or to stdout, its notes to stderr."""
+    if output is None:
+        click.echo(result.csv_text(), nl=False)
+    notes(getattr(result, "notes", ()))
+    save(result, output)
+
+
+@export.command()
+@design_argument
+@click.option("--points", type=click.IntRange(2, 100_000), help="Rows, instead of band.points.")
+@_target
+def curve(
+    design: str,
+    changes: tuple[str, ...],
+    points: int | None,
+    output: str | None,
+    replace: bool,
+) -> None:
+    """n_eff, n_g, beta2, D, area and gamma against wavelength."""
+    from phasematch.study import curve_table, solve_curve
+
+    check_file(output, replace)
+    if points is not None:
+        changes = (*changes, f"band.points={points}")
+    checked = read(design, changes)
+    with progress() as tell:
+        result = curve_table(checked, solve_curve(checked, tell))
+    _hand_over(result, output)
+
+
+@export.command()
+@design_argument
+@click.option("--pump-um", type=float, help="Instead of mode.wavelength_um.")
+@click.option("--orders", type=click.IntRange(1, 6), default=4, show_default=True)
+@_target
+def betas(
+    design: str,
+    changes: tuple[str, ...],
+    pump_um: float | None,
+    orders: int,
+    output: str | None,
+    replace: bool,
+) -> None:
+    """beta_k about a pump, in ps^k/km."""
+    from phasematch.study import solve_curve
+    from phasematch.tables import beta_table
+
+    check_file(output, replace)
+    checked = read(design, changes)
+    pump = checked.reference_um if pump_um is None else pump_um
+    with progress() as tell:
+        solved = solve_curve(checked, tell)
+        result = beta_table(solved, pump, orders=orders, inputs=checked.as_dict())
+    _hand_over(result, output)
+
+
+@export.command()
+@design_argument
+@click.option("--from-um", type=float, required=True, help="Narrowest core.")
+@click.option("--to-um", type=float, required=True, help="Widest core.")
+@click.option("--points", type=click.IntRange(2, 2001), default=11, show_default=True)
+@click.option("--wavelength-um", type=float, help="Instead of mode.wavelength_um.")
+@_target
+def taper(
+    design: str,
+    changes: tuple[str, ...],
+    from_um: float,
+    to_um: float,
+    points: int,
+    wavelength_um: float | None,
+    output: str | None,
+    replace: bool,
+) -> int:
+    """n_eff, n_g and area against core width.
+
+    Widths where the mode is missing are NaN with the reason; the exit code is then 3.
+    """
+    from phasematch.study import section_of
+    from phasematch.tables import taper_table
+
+    check_file(output, replace)
+    checked = read(design, changes)
+    mode = checked.tables.mode
+    with progress() as tell:
+        result = taper_table(
+            section_of(checked),
+            np.linspace(from_um, to_um, points).round(9).tolist(),
+            checked.reference_um if wavelength_um is None else wavelength_um,
+            mode.label,
+            progress=tell,
+        )
+    _hand_over(result, output)
+    if result.failed:
+        say(f"{result.failed} of {points} widths have no value; the column reason says why")
+        return FAILED_POINTS
+    return 0

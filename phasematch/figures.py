@@ -1,0 +1,307 @@
+"""Figures of modes, dispersion, channel maps and ring alignment, at one-column size.
+
+Colour maps are perceptually uniform and readable by the colour-blind: cividis, whose
+lightness rises all the way, so that it also survives a grey print. Signed quantities use
+it with zero in the middle and the zero line drawn. Error bars are drawn to scale; where
+none is seen, it is thinner than the line.
+"""
+
+from __future__ import annotations
+
+import os
+from collections.abc import Iterator
+from contextlib import contextmanager
+from typing import TYPE_CHECKING, Any
+
+import matplotlib as mpl
+import numpy as np
+from matplotlib.backends.backend_agg import FigureCanvasAgg
+from matplotlib.colors import Normalize, SymLogNorm
+from matplotlib.figure import Figure
+from matplotlib.ticker import MaxNLocator
+
+from materials.common.files import whole_file
+
+if TYPE_CHECKING:
+    from modesolve import Mode
+    from phasematch.channel_results import ChannelMap
+    from phasematch.ring_results import DetuningMap, PairTable
+    from phasematch.tables import DispersionTable
+
+#: Width of a column, inches.
+COLUMN_IN = 3.4
+
+#: Colours that the colour-blind can tell apart (after Okabe and Ito, 2008).
+BLUE, ORANGE, GREY = "#0072B2", "#D55E00", "#6E6E6E"
+_MAP = "cividis"
+_NO_VALUE = "#E4E4E4"
+
+_STYLE: Any = {
+    "font.size": 8.0,
+    "axes.linewidth": 0.6,
+    "axes.titlesize": 8.0,
+    "lines.linewidth": 1.2,
+    "xtick.major.width": 0.6,
+    "ytick.major.width": 0.6,
+    "legend.frameon": False,
+    "legend.fontsize": 7.0,
+    "svg.fonttype": "none",
+    "pdf.fonttype": 42,
+    "axes.formatter.useoffset": False,
+    "image.cmap": _MAP,
+}
+
+
+@contextmanager
+def _figure(height_in: float) -> Iterator[Figure]:
+    """A figure one column wide, in the house style and without pyplot's global state."""
+    with mpl.rc_context(_STYLE):
+        figure = Figure(figsize=(COLUMN_IN, height_in), layout="constrained")
+        FigureCanvasAgg(figure)
+        yield figure
+
+
+def save_figure(figure: Figure, path: str | os.PathLike[str], *, dpi: int = 300) -> None:
+    """Write a figure, whole or not at all; the suffix is the format (png, pdf, svg)."""
+    suffix = os.fspath(path).rpartition(".")[2]
+    about = {"Software": None} if suffix == "png" else {"Creator": None, "CreationDate": None}
+    if suffix == "svg":
+        about = {"Creator": None, "Date": None}
+    with mpl.rc_context(_STYLE), whole_file(path) as temporary, open(temporary, "wb") as file:
+        figure.savefig(file, format=suffix, dpi=dpi, metadata=about)
+
+
+# ---------------------------------------------------------------- mode
+
+
+def mode_field_figure(mode: Mode) -> Figure:
+    """The dominant electric component of a mode over the cross-section."""
+    field, section = mode.fields(), mode.section
+    name = "x" if mode.te_fraction >= 0.5 else "y"
+    values = np.real(getattr(field, f"e_{name}"))
+    values = values * np.sign(values.flat[np.argmax(np.abs(values))])
+    half, low, high = _window(field.x_um, field.y_um, values, section)
+    with _figure(min(3.6, 0.75 + 2.3 * (high - low) / (2 * half))) as figure:
+        axes = figure.add_subplot()
+        shown = axes.pcolormesh(
+            field.x_um,
+            field.y_um,
+            values.T,
+            shading="gouraud",
+            norm=Normalize(-1.0 if values.min() < -0.1 else 0.0, 1.0),
+            rasterized=True,
+        )
+        if values.min() < -0.1:
+            axes.contour(field.x_um, field.y_um, values.T, [0.0], colors="white", linewidths=0.5)
+        _draw_section(axes, section, half)
+        axes.set(xlim=(-half, half), ylim=(low, high), aspect="equal")
+        axes.set(xlabel="x (µm)", ylabel="y (µm)")
+        axes.set_title(
+            f"{mode.label}, {mode.wavelength_um:.4g} µm, $n_{{\\rm eff}}$ = {mode.n_eff:.5f}"
+        )
+        bar = figure.colorbar(shown, ax=axes, shrink=0.8)
+        bar.ax.yaxis.set_major_locator(MaxNLocator(2))
+        bar.set_label(f"$E_{name}$ / max |E|")
+    return figure
+
+
+def _window(x: Any, y: Any, values: Any, section: Any) -> tuple[float, float, float]:
+    """Half width, bottom and top of the part worth showing, um."""
+    strong = np.abs(values) > 0.02
+    columns, rows = np.flatnonzero(strong.any(axis=1)), np.flatnonzero(strong.any(axis=0))
+    margin = 0.15 * (section.width_um + section.height_um)
+    half = max(abs(x[columns[0]]), abs(x[columns[-1]]), 0.5 * section.width_um + margin)
+    low = min(y[rows[0]], -margin)
+    high = max(y[rows[-1]], section.height_um + margin)
+    return float(min(half, abs(x[-1]))), float(max(low, y[0])), float(min(high, y[-1]))
+
+
+def _draw_section(axes: Any, section: Any, half: float) -> None:
+    """Outlines of the core and the flat films."""
+    slab, height = section.slab_um, section.height_um
+    slope = 1.0 / np.tan(np.radians(section.sidewall_deg))
+    lean = [
+        0.5 * section.width_um + (section.width_at - at) * (height - slab) * slope
+        for at in (0.0, 1.0)
+    ]
+    line = {"color": "white", "linewidth": 0.8}
+    if slab > 0:
+        xs = [-half, -lean[0], -lean[1], lean[1], lean[0], half]
+        axes.plot(xs, [slab, slab, height, height, slab, slab], **line)
+        axes.axhline(0.0, **line)
+    else:
+        xs = [-lean[0], -lean[1], lean[1], lean[0], -lean[0]]
+        axes.plot(xs, [0.0, height, height, 0.0, 0.0], **line)
+    below = [-float(t) for t in np.cumsum([t for _, t in section.layers_below])]
+    above = [height + float(t) for t in np.cumsum([t for _, t in section.layers_above])]
+    for face in [*([0.0] if below else []), *below, *above]:
+        axes.axhline(face, linestyle=":", **line)
+
+
+# ---------------------------------------------------------------- dispersion
+
+
+def dispersion_figure(table: DispersionTable) -> Figure:
+    """Effective index, group index and D against wavelength, zero dispersion marked."""
+    panels = (
+        ("n_eff", "$n_{\\rm eff}$"),
+        ("n_group", "$n_{\\rm g}$"),
+        ("dispersion_ps_per_nm_km", "D (ps nm$^{-1}$ km$^{-1}$)"),
+    )
+    x = table.wavelength_um
+    with _figure(4.4) as figure:
+        rows = figure.subplots(3, 1, sharex=True, height_ratios=(1, 1, 1.5))
+        for axes, (name, label) in zip(rows, panels, strict=True):
+            values, bar = getattr(table, name), table.error[name]
+            axes.fill_between(x, values - bar, values + bar, color=BLUE, alpha=0.3, linewidth=0)
+            axes.plot(x, values, color=BLUE)
+            axes.set_ylabel(label)
+            axes.yaxis.set_major_locator(MaxNLocator(4))
+        last = rows[-1]
+        last.axhline(0.0, color=GREY, linewidth=0.6)
+        anomalous = table.dispersion_ps_per_nm_km > 0
+        if anomalous.any() and not anomalous.all():
+            last.fill_between(
+                x, 0, 1, where=anomalous, transform=last.get_xaxis_transform(),
+                color=ORANGE, alpha=0.12, linewidth=0, label="anomalous",
+            )  # fmt: skip
+            last.legend(loc="lower right")
+        for zero in table.zero_dispersion_um:
+            last.plot(zero, 0.0, "o", color=ORANGE, markersize=4)
+            last.annotate(f"{zero:.4f} µm", (zero, 0.0), (4, 5), textcoords="offset points")
+        last.set_xlabel("wavelength (µm)")
+        last.set_xlim(x[0], x[-1])
+        rows[0].set_title(f"{table.mode}")
+    return figure
+
+
+# ---------------------------------------------------------------- channel
+
+
+def channel_map_figure(result: ChannelMap, *, span_db: float = 40.0) -> Figure:
+    """Idler efficiency of a channel over pump and signal wavelength."""
+    values = result.efficiency_db
+    known = values[np.isfinite(values)]
+    top = float(known.max()) if known.size else 0.0
+    with _figure(2.7) as figure:
+        axes = figure.add_subplot()
+        axes.set_facecolor(_NO_VALUE)
+        shown = axes.pcolormesh(
+            result.signal_um,
+            result.pump_um,
+            np.ma.masked_invalid(values),
+            norm=Normalize(top - span_db, top),
+            shading="nearest",
+            rasterized=True,
+        )
+        _marked_level(axes, result, values)
+        axes.set(xlabel="signal wavelength (µm)", ylabel="pump wavelength (µm)")
+        axes.set_title(_channel_title(result))
+        bar = figure.colorbar(shown, ax=axes, extend="min")
+        bar.set_label("idler out / signal in (dB)")
+        if known.size < values.size:
+            axes.plot([], [], "s", color=_NO_VALUE, label="outside the solved band")
+            axes.legend(loc="upper left", bbox_to_anchor=(0.0, -0.2), borderpad=0.0)
+    return figure
+
+
+def _channel_title(result: ChannelMap) -> str:
+    length = result.inputs.get("length_mm")
+    about = [] if length is None else [f"{length:g} mm"]
+    return ", ".join([*about, f"{result.pump_w:g} W; line: $-$3 dB of each pump"])
+
+
+def _marked_level(axes: Any, result: ChannelMap, values: np.ndarray) -> None:
+    """The line where the efficiency has fallen by 3 dB from the best of the same pump."""
+    if min(values.shape) < 2 or not np.isfinite(values).any():
+        return
+    filled = np.nan_to_num(values, nan=-1e3, neginf=-1e3)
+    axes.contour(
+        result.signal_um,
+        result.pump_um,
+        filled - filled.max(axis=1, keepdims=True),
+        [-3.0],
+        colors="black",
+        linewidths=0.6,
+        linestyles="solid",
+    )
+
+
+# ---------------------------------------------------------------- ring
+
+
+def ring_figure(pairs: PairTable) -> Figure:
+    """Misalignment of each resonance pair, the loaded linewidth shaded."""
+    miss, width = pairs.misalignment_mhz, pairs.linewidth_mhz
+    bar = np.asarray(pairs.error["misalignment_mhz"])
+    unit = _linear_part(width)
+    with _figure(2.5) as figure:
+        axes = figure.add_subplot()
+        axes.fill_between(
+            pairs.mu, -width, width, color=GREY, alpha=0.25, linewidth=0,
+            label="within a linewidth",
+        )  # fmt: skip
+        axes.axhline(0.0, color=GREY, linewidth=0.6)
+        style: dict[str, Any] = {
+            "fmt": "o",
+            "markersize": 2.5,
+            "elinewidth": 0.8,
+            "linestyle": "none",
+        }
+        for chosen, colour, fill, label in (
+            (pairs.aligned, BLUE, BLUE, "aligned"),
+            (~pairs.aligned & np.isfinite(miss), ORANGE, "white", "not aligned"),
+        ):
+            if chosen.any():
+                axes.errorbar(
+                    pairs.mu[chosen], miss[chosen], bar[chosen], color=colour,
+                    markerfacecolor=fill, label=label, **style,
+                )  # fmt: skip
+        axes.set_yscale("symlog", linthresh=unit, linscale=1.0)
+        axes.set_ylim(*_symlog_limits(miss, unit))
+        axes.set(xlabel="pair index µ", ylabel="misalignment (MHz)")
+        axes.xaxis.set_major_locator(MaxNLocator(6, integer=True))
+        axes.set_title(f"pump {float(pairs.pump_um):.4f} µm")
+        upwards = np.nanmax(miss, initial=0.0) >= -np.nanmin(miss, initial=0.0)
+        axes.legend(loc="lower right" if upwards else "upper right")
+    return figure
+
+
+def _linear_part(width: np.ndarray) -> float:
+    """Where the axis turns from linear to logarithmic: the usual linewidth, MHz."""
+    known = width[np.isfinite(width) & (width > 0)]
+    return float(np.median(known)) if known.size else 1.0
+
+
+def _symlog_limits(values: np.ndarray, unit: float) -> tuple[float, float]:
+    """Limits that hold all values and at least two linewidths to either side."""
+    known = values[np.isfinite(values)]
+    low, high = (float(known.min()), float(known.max())) if known.size else (0.0, 0.0)
+    return min(1.6 * low, -2.0 * unit), max(1.6 * high, 2.0 * unit)
+
+
+def detuning_figure(result: DetuningMap) -> Figure:
+    """Misalignment over pump resonance and pair index, aligned region outlined."""
+    miss = result.misalignment_mhz
+    unit = _linear_part(np.asarray(result.linewidth_mhz))
+    reach = float(np.nanmax(np.abs(miss), initial=2.0 * unit))
+    with _figure(2.7) as figure:
+        axes = figure.add_subplot()
+        axes.set_facecolor(_NO_VALUE)
+        shown = axes.pcolormesh(
+            result.mu,
+            result.pump_um,
+            np.ma.masked_invalid(miss),
+            norm=SymLogNorm(unit, linscale=1.0, vmin=-reach, vmax=reach),
+            shading="nearest",
+            rasterized=True,
+        )
+        if min(miss.shape) > 1:
+            within = np.where(result.aligned, 1.0, 0.0)
+            axes.contour(result.mu, result.pump_um, within, [0.5], colors="white", linewidths=0.8)
+        axes.set(xlabel="pair index µ", ylabel="pump resonance (µm)")
+        axes.set_title("line: within a linewidth")
+        axes.xaxis.set_major_locator(MaxNLocator(6, integer=True))
+        bar = figure.colorbar(shown, ax=axes)
+        bar.set_label("misalignment (MHz)")
+    return figure

@@ -1,0 +1,291 @@
+"""A design, run: modes, dispersion curve, channel and ring, then files and figures.
+
+`run_design` computes and writes; `solve_design` computes only. Everything is written to a
+staging folder that takes its place at the end, so an output folder is whole or absent.
+"""
+
+from __future__ import annotations
+
+import os
+import time
+from collections.abc import Callable
+from dataclasses import dataclass
+from pathlib import Path
+
+import numpy as np
+
+import materials
+from materials.common.errors import DesignFileError
+from materials.common.files import write_text
+from materials.common.folders import whole_folder
+from materials.common.results import Provenance, make_provenance
+from modesolve.cross_section import CrossSection
+from modesolve.dispersion import DispersionCurve, dispersion
+from modesolve.mode import Mode, solve_modes
+from phasematch.channel import Channel
+from phasematch.channel_results import ChannelMap, ConversionBand, PairFlux
+from phasematch.design_file import Design
+from phasematch.mixing import LASER_CAUTION
+from phasematch.ring import Ring
+from phasematch.ring_results import DetuningMap, PairRates, PairTable, RingDispersion
+from phasematch.tables import (
+    DispersionTable,
+    ModeTable,
+    dispersion_table,
+    find_mode,
+    mode_table,
+)
+
+Progress = Callable[[str], None]
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class ChannelResults:
+    """What a design's channel gives."""
+
+    map: ChannelMap
+    band: ConversionBand
+    flux: PairFlux
+
+    @property
+    def notes(self) -> tuple[str, ...]:
+        """Notes of all parts, once each."""
+        return tuple(dict.fromkeys((*self.map.notes, *self.band.notes, *self.flux.notes)))
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class RingResults:
+    """What a design's ring gives; no rates without a pump power."""
+
+    pairs: PairTable
+    detuning: DetuningMap
+    dispersion: RingDispersion
+    rates: PairRates | None
+
+    @property
+    def notes(self) -> tuple[str, ...]:
+        """Notes of all parts, once each."""
+        rates = self.rates.notes if self.rates is not None else ()
+        return tuple(dict.fromkeys((*self.pairs.notes, *self.detuning.notes, *rates)))
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Outcome:
+    """All results of a design; what it does not ask for is None."""
+
+    design: Design
+    mode: Mode
+    modes: ModeTable
+    curve: DispersionCurve
+    table: DispersionTable
+    channel: ChannelResults | None
+    ring: RingResults | None
+    provenance: Provenance
+
+    @property
+    def notes(self) -> tuple[str, ...]:
+        """What to know about the results, once each."""
+        parts = (self.modes, self.table, self.channel, self.ring)
+        found = (note for part in parts if part is not None for note in part.notes)
+        return tuple(dict.fromkeys(found))
+
+
+def section_of(design: Design) -> CrossSection:
+    """The cross-section of a design, its media extrapolated where it says so."""
+    given = design.tables.cross_section.model_dump()
+    if design.tables.band.extrapolate:
+        for name in ("core", "cladding", "substrate"):
+            given[name] = materials.load(given[name]).allow_extrapolation()
+        for name in ("layers_below", "layers_above"):
+            given[name] = tuple(
+                (materials.load(key).allow_extrapolation(), thickness)
+                for key, thickness in given[name]
+            )
+    return CrossSection(**given)
+
+
+def solve_curve(design: Design, progress: Progress) -> DispersionCurve:
+    """The dispersion curve of the design's mode over its band."""
+    band, mode = design.tables.band, design.tables.mode
+    progress(f"dispersion of {mode.label} from {band.from_um:g} to {band.to_um:g} um")
+    return dispersion(
+        section_of(design),
+        band.from_um,
+        band.to_um,
+        mode=mode.label,
+        reference_um=design.reference_um,
+    )
+
+
+def curve_table(design: Design, curve: DispersionCurve) -> DispersionTable:
+    """The curve at as many wavelengths as the design asks for."""
+    band = design.tables.band
+    wavelengths = np.linspace(band.from_um, band.to_um, band.points)
+    return dispersion_table(curve, wavelengths, design.as_dict())
+
+
+def channel_results(design: Design, curve: DispersionCurve) -> ChannelResults:
+    """Map, conversion band and pair flux of a design's channel."""
+    table = design.tables.channel
+    if table is None or table.map_pump_um is None or table.map_signal_um is None:
+        raise missing_table(design, "channel")
+    channel = Channel(curve, length_mm=table.length_mm, loss_db_per_cm=table.loss_db_per_cm)
+    pumps = np.linspace(*table.map_pump_um, table.map_points)
+    signals = np.linspace(*table.map_signal_um, table.map_points)
+    return ChannelResults(
+        map=channel.map(pumps, signals, table.pump_w),
+        band=channel.conversion_band(table.pump_um, table.pump_w),
+        flux=channel.pair_flux(table.pump_um, table.pump_w),
+    )
+
+
+def ring_results(design: Design, curve: DispersionCurve) -> RingResults:
+    """Pairs, detuning map, D1 to D4 and, with a pump power, pair rates of a design's ring."""
+    table = design.tables.ring
+    if table is None:
+        raise missing_table(design, "ring")
+    ring = Ring(
+        curve,
+        radius_um=table.radius_um,
+        q_intrinsic=table.q_intrinsic,
+        q_coupling=table.q_coupling,
+    )
+    powered = table.pump_w > 0
+    return RingResults(
+        pairs=ring.pairs(table.pump_um, table.pairs),
+        detuning=ring.detuning_map(table.map_pump_um, table.pairs),
+        dispersion=ring.dispersion_coefficients(table.pump_um),
+        rates=ring.spontaneous(table.pump_um, table.pump_w, table.pairs) if powered else None,
+    )
+
+
+def missing_table(design: Design, name: str) -> DesignFileError:
+    """The error of a design that lacks a table it is asked about."""
+    return DesignFileError((f"{design.source}: [{name}]: this table is missing; add it",))
+
+
+def solve_design(design: Design, progress: Progress = lambda message: None) -> Outcome:
+    """Compute everything a design asks for.
+
+    Parameters
+    ----------
+    design : Design
+    progress : callable, optional
+        Told what is being done, one line at a time.
+
+    Raises
+    ------
+    NoGuidedMode
+        The mode does not exist, or not over the whole band.
+    SolverError
+        A mode could not be resolved.
+    """
+    started = time.perf_counter()
+    tables = design.tables
+    section = section_of(design)
+    wavelength = design.reference_um
+    progress(f"modes at {wavelength:g} um")
+    modes = solve_modes(section, wavelength, tables.mode.count)
+    mode = next((m for m in modes if m.label == tables.mode.label), None)
+    if mode is None:
+        mode = find_mode(section, wavelength, tables.mode.label)
+    curve = solve_curve(design, progress)
+    channel = ring = None
+    if tables.channel is not None:
+        progress("channel: pump x signal map, conversion band, pair flux")
+        channel = channel_results(design, curve)
+    if tables.ring is not None:
+        progress("ring: resonance pairs and detuning map")
+        ring = ring_results(design, curve)
+    keys = [m.key for m in section.media]
+    return Outcome(
+        design=design,
+        mode=mode,
+        modes=mode_table(modes),
+        curve=curve,
+        table=curve_table(design, curve),
+        channel=channel,
+        ring=ring,
+        provenance=make_provenance(
+            keys, mode.provenance.grid, seconds=time.perf_counter() - started
+        ),
+    )
+
+
+def run_design(
+    design: Design,
+    folder: str | os.PathLike[str],
+    *,
+    replace: bool = False,
+    progress: Progress = lambda message: None,
+) -> Outcome:
+    """Run a design and write its results into a folder, whole or not at all.
+
+    Parameters
+    ----------
+    design : Design
+    folder : path
+        Missing or empty, unless ``replace``.
+    replace : bool
+        Replace what an earlier run wrote there; other files are kept.
+    progress : callable, optional
+        Told what is being done, one line at a time.
+
+    Raises
+    ------
+    StorageError
+        The folder cannot be written, or is not empty; found out before any work is done.
+    NoGuidedMode, SolverError
+        As `solve_design`.
+    """
+    with whole_folder(folder, replace=replace) as staging:
+        outcome = solve_design(design, progress)
+        progress("tables")
+        _write_tables(outcome, staging)
+        if design.tables.output.figures != "none":
+            progress("figures")
+            _draw_figures(outcome, staging)
+    return outcome
+
+
+def _write_tables(outcome: Outcome, folder: Path) -> None:
+    from phasematch.report import as_text, notes_lines, summary
+
+    outcome.modes.to_csv(folder / "modes.csv")
+    outcome.table.to_csv(folder / "dispersion.csv")
+    outcome.table.to_hdf5(folder / "dispersion.h5")
+    outcome.mode.fields().to_hdf5(folder / "mode_field.h5")
+    if outcome.channel is not None:
+        outcome.channel.map.to_hdf5(folder / "channel_map.h5")
+        outcome.channel.band.to_csv(folder / "conversion_band.csv")
+        outcome.channel.flux.to_csv(folder / "pair_flux.csv")
+    if outcome.ring is not None:
+        outcome.ring.pairs.to_csv(folder / "ring_pairs.csv")
+        outcome.ring.pairs.to_hdf5(folder / "ring_pairs.h5")
+        outcome.ring.detuning.to_hdf5(folder / "detuning_map.h5")
+        outcome.ring.dispersion.to_csv(folder / "ring_dispersion.csv")
+        if outcome.ring.rates is not None:
+            outcome.ring.rates.to_csv(folder / "pair_rates.csv")
+    write_text(folder / "design.toml", outcome.design.to_toml(outcome.provenance))
+    parts = [as_text(*summary(outcome)), *notes_lines(outcome.notes)]
+    if LASER_CAUTION in outcome.notes:
+        parts.append("\n" + LASER_CAUTION)
+    write_text(folder / "summary.txt", "\n".join(parts) + "\n")
+
+
+def _draw_figures(outcome: Outcome, folder: Path) -> None:
+    from phasematch import figures
+
+    drawn = {
+        "mode_field": figures.mode_field_figure(outcome.mode),
+        "dispersion": figures.dispersion_figure(outcome.table),
+    }
+    if outcome.channel is not None:
+        drawn["channel_map"] = figures.channel_map_figure(outcome.channel.map)
+    if outcome.ring is not None:
+        drawn["ring_misalignment"] = figures.ring_figure(outcome.ring.pairs)
+        drawn["detuning_map"] = figures.detuning_figure(outcome.ring.detuning)
+    output = outcome.design.tables.output
+    for name, figure in drawn.items():
+        path = folder / f"{name}.{output.figures}"
+        figures.save_figure(figure, path, dpi=output.resolution_dpi)

@@ -1,0 +1,289 @@
+"""Tables to hand on: a curve against wavelength, beta_k about a pump, n_eff of a taper."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Mapping, Sequence
+from dataclasses import dataclass, field, fields, replace
+from typing import Any
+
+import numpy as np
+
+from materials.common.constants import PER_UM_TO_PER_KM, omega_from_um
+from materials.common.errors import NoGuidedMode, OutOfRange, SolverError
+from materials.common.results import (
+    ErrorBars,
+    Provenance,
+    Result,
+    frozen_array,
+    make_provenance,
+    quantity,
+)
+from modesolve.cross_section import CrossSection
+from modesolve.dispersion import DispersionCurve
+from modesolve.mode import Mode, solve_modes
+from phasematch.mixing import error_bar
+
+_AXIS = ("wavelength_um",)
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class ModeTable(Result):
+    """The modes of a cross-section at one wavelength, highest index first."""
+
+    wavelength_um: float = quantity("wavelength", "um")
+    mode: np.ndarray = quantity("mode", "", ("mode",))
+    n_eff: np.ndarray = quantity("effective index", "1", ("mode",))
+    dispersion_ps_per_nm_km: np.ndarray = quantity("dispersion D", "ps/(nm km)", ("mode",))
+    gamma_per_w_m: np.ndarray = quantity("nonlinear coefficient", "1/(W m)", ("mode",))
+    effective_area_um2: np.ndarray = quantity("effective area", "um2", ("mode",))
+    loss_db_per_cm: np.ndarray = quantity("loss", "dB/cm", ("mode",))
+    n_group: np.ndarray = quantity("group index", "1", ("mode",))
+    beta2_ps2_per_km: np.ndarray = quantity("group-velocity dispersion", "ps2/km", ("mode",))
+    beta3_ps3_per_km: np.ndarray = quantity("third-order dispersion", "ps3/km", ("mode",))
+    beta4_ps4_per_km: np.ndarray = quantity("fourth-order dispersion", "ps4/km", ("mode",))
+    te_fraction: np.ndarray = quantity("TE fraction", "1", ("mode",))
+    error: ErrorBars = field(default_factory=ErrorBars)
+    inputs: Mapping[str, Any] = field(default_factory=dict)
+    notes: tuple[str, ...] = ()
+    provenance: Provenance | None = None
+
+
+def mode_table(modes: Sequence[Mode]) -> ModeTable:
+    """The numbers of several modes of one cross-section side by side."""
+    names = [f.name for f in fields(ModeTable) if f.metadata.get("dims") and f.name != "mode"]
+    return ModeTable(
+        wavelength_um=modes[0].wavelength_um,
+        mode=frozen_array([m.label for m in modes]),
+        **{name: frozen_array([getattr(m, name) for m in modes]) for name in names},
+        error=ErrorBars({name: np.array([m.error[name] for m in modes]) for name in names}),
+        inputs=modes[0].inputs,
+        notes=tuple(dict.fromkeys(note for m in modes for note in m.notes)),
+        provenance=modes[0].provenance,
+    )
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class DispersionTable(Result):
+    """A dispersion curve at chosen wavelengths."""
+
+    mode: str = quantity("mode", "")
+    wavelength_um: np.ndarray = quantity("wavelength", "um", _AXIS)
+    n_eff: np.ndarray = quantity("effective index", "1", _AXIS)
+    n_group: np.ndarray = quantity("group index", "1", _AXIS)
+    dispersion_ps_per_nm_km: np.ndarray = quantity("dispersion D", "ps/(nm km)", _AXIS)
+    beta2_ps2_per_km: np.ndarray = quantity("group-velocity dispersion", "ps2/km", _AXIS)
+    effective_area_um2: np.ndarray = quantity("effective area", "um2", _AXIS)
+    gamma_per_w_m: np.ndarray = quantity("nonlinear coefficient", "1/(W m)", _AXIS)
+    zero_dispersion_um: np.ndarray = quantity(
+        "zero-dispersion wavelength", "um", ("zero_crossing",)
+    )
+    error: ErrorBars = field(default_factory=ErrorBars)
+    inputs: Mapping[str, Any] = field(default_factory=dict)
+    notes: tuple[str, ...] = ()
+    provenance: Provenance | None = None
+
+
+#: Methods of a curve that become columns.
+COLUMNS = (
+    "n_eff",
+    "n_group",
+    "dispersion_ps_per_nm_km",
+    "beta2_ps2_per_km",
+    "effective_area_um2",
+    "gamma_per_w_m",
+)
+
+
+def dispersion_table(
+    curve: DispersionCurve, wavelength_um: Any, inputs: Mapping[str, Any] | None = None
+) -> DispersionTable:
+    """Evaluate a curve with its error bars.
+
+    Parameters
+    ----------
+    curve : DispersionCurve
+    wavelength_um : array_like, shape (n,), um
+        Inside the curve's band.
+    inputs : mapping, optional
+        What the curve was made from, for the header.
+    """
+    w = frozen_array(wavelength_um, float)
+    values = {name: frozen_array(getattr(curve, name)(w)) for name in COLUMNS}
+    bars = {name: np.asarray(curve.error[name](w)) for name in COLUMNS}
+    zeros = frozen_array(np.atleast_1d(curve.zero_dispersion_um()))
+    return DispersionTable(
+        mode=curve.mode,
+        wavelength_um=w,
+        **values,
+        zero_dispersion_um=zeros,
+        error=ErrorBars(bars, zero_dispersion_um=_zero_bars(curve)),
+        inputs=inputs or {},
+        notes=tuple(curve.notes),
+        provenance=curve.provenance,
+    )
+
+
+def _zero_bars(curve: DispersionCurve) -> np.ndarray:
+    bars = curve.error["zero_dispersion_um"]
+    return np.atleast_1d(np.asarray(bars() if callable(bars) else bars, dtype=float))
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class BetaTable(Result):
+    """Derivatives of beta by angular frequency about a pump."""
+
+    mode: str = quantity("mode", "")
+    pump_um: float = quantity("pump wavelength", "um")
+    order: np.ndarray = quantity("order k of the derivative", "1", ("order",))
+    beta: np.ndarray = quantity("beta_k = d^k beta/d omega^k", "ps^k/km", ("order",))
+    error: ErrorBars = field(default_factory=ErrorBars)
+    inputs: Mapping[str, Any] = field(default_factory=dict)
+    notes: tuple[str, ...] = ()
+    provenance: Provenance | None = None
+
+
+def beta_table(
+    curve: DispersionCurve,
+    pump_um: float,
+    *,
+    orders: int = 4,
+    inputs: Mapping[str, Any] | None = None,
+) -> BetaTable:
+    """beta_0 to beta_orders about a pump, in ps^k/km.
+
+    Raises
+    ------
+    OutOfRange
+        The pump lies outside the curve's band.
+    """
+    curve.n_eff(pump_um)  # raises outside the band
+    omega = omega_from_um(float(pump_um))
+
+    def betas(one: Any) -> np.ndarray:
+        found = [one.beta_rad_per_um(omega, derivative=k) for k in range(orders + 1)]
+        return PER_UM_TO_PER_KM * np.asarray(found, dtype=float)
+
+    return BetaTable(
+        mode=curve.mode,
+        pump_um=float(pump_um),
+        order=frozen_array(np.arange(orders + 1)),
+        beta=frozen_array(betas(curve)),
+        error=ErrorBars(beta=np.asarray(error_bar(curve, betas))),
+        inputs=inputs or {},
+        notes=tuple(curve.notes),
+        provenance=curve.provenance,
+    )
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class TaperTable(Result):
+    """Effective index of one mode against core width.
+
+    Where the mode is not guided, or could not be solved, the value is NaN and ``reason``
+    says why.
+    """
+
+    mode: str = quantity("mode", "")
+    wavelength_um: float = quantity("wavelength", "um")
+    width_um: np.ndarray = quantity("core width", "um", ("width_um",))
+    n_eff: np.ndarray = quantity("effective index", "1", ("width_um",))
+    n_group: np.ndarray = quantity("group index", "1", ("width_um",))
+    effective_area_um2: np.ndarray = quantity("effective area", "um2", ("width_um",))
+    reason: np.ndarray = quantity("why there is no value", "", ("width_um",))
+    error: ErrorBars = field(default_factory=ErrorBars)
+    inputs: Mapping[str, Any] = field(default_factory=dict)
+    notes: tuple[str, ...] = ()
+    provenance: Provenance | None = None
+
+    @property
+    def failed(self) -> int:
+        """Number of widths without a value."""
+        return int(np.isnan(self.n_eff).sum())
+
+
+def taper_table(
+    section: CrossSection,
+    width_um: Sequence[float],
+    wavelength_um: float,
+    mode: str = "TE0",
+    *,
+    progress: Callable[[str], None] = lambda message: None,
+) -> TaperTable:
+    """n_eff, n_g and area of a mode for each width of a taper.
+
+    Parameters
+    ----------
+    section : CrossSection
+        Everything but the width.
+    width_um : sequence of float, um
+    wavelength_um : float, um
+    mode : str
+        Label; it is counted afresh at each width, by falling index among the modes of
+        the same polarisation.
+    progress : callable, optional
+        Told what is being done, one line at a time.
+
+    Raises
+    ------
+    OutOfRange
+        A width outside 0.005 to 100 um, or a wavelength that makes no sense.
+    """
+    widths = frozen_array(width_um, float)
+    sections = [replace(section, width_um=float(w)) for w in widths]
+    names = ("n_eff", "n_group", "effective_area_um2")
+    values = np.full((3, widths.size), np.nan)
+    bars = np.full((3, widths.size), np.nan)
+    reasons = np.full(widths.size, "", dtype=object)
+    notes: dict[str, None] = {}
+    provenance = None
+    for i, one in enumerate(sections):
+        progress(f"width {i + 1} of {widths.size}: {widths[i]:g} um")
+        try:
+            found = find_mode(one, wavelength_um, mode)
+        except (NoGuidedMode, SolverError) as exc:
+            reasons[i] = str(exc)
+            continue
+        values[:, i] = [getattr(found, name) for name in names]
+        bars[:, i] = [found.error[name] for name in names]
+        notes.update(dict.fromkeys(found.notes))
+        provenance = found.provenance
+    if provenance is None:
+        provenance = make_provenance([m.key for m in section.media])
+    about = {**section.describe(), "wavelength_um": wavelength_um, "mode": mode}
+    about.pop("width_um")
+    return TaperTable(
+        mode=mode,
+        wavelength_um=float(wavelength_um),
+        width_um=widths,
+        **{name: frozen_array(v) for name, v in zip(names, values, strict=True)},
+        reason=frozen_array(reasons),
+        error=ErrorBars(dict(zip(names, bars, strict=True))),
+        inputs=about,
+        notes=tuple(notes),
+        provenance=provenance,
+    )
+
+
+def find_mode(section: CrossSection, wavelength_um: float, label: str) -> Mode:
+    """The mode of a label, looking at as few modes as will do.
+
+    Raises
+    ------
+    NoGuidedMode
+        There is no such mode; the message lists those that there are.
+    """
+    count = 2 * int(label[2:]) + 2
+    while True:
+        modes = solve_modes(section, wavelength_um, count)
+        for mode in modes:
+            if mode.label == label:
+                return mode
+        if len(modes) < count:
+            labels = ", ".join(mode.label for mode in modes)
+            raise NoGuidedMode(
+                f"no mode {label} at {wavelength_um:g} um: guided are {labels}; choose one of "
+                "them or change the cross-section"
+            )
+        if count >= 80:
+            raise OutOfRange(f"mode {label}: not among the first {count} modes; choose a lower one")
+        count *= 2
