@@ -3,7 +3,7 @@
 Newton's method with the curve's exact derivative, all orders at once. Each root is kept
 as the nearest double and the correction below it, so that second differences of roots of
 1e3 rad/ps lose nothing in the subtraction: what is left is the rounding of beta itself,
-some 1e-16 of 1e3 rad, which is about 1 Hz.
+some 1e-16 of 1e3 rad, which is about 0.1 Hz.
 """
 
 from __future__ import annotations

@@ -55,7 +55,7 @@ def test_resonances_and_misalignment_keep_their_digits():
     exact = [float(want[1 + i] + want[6 + i] - 2 * want[0]) for i in range(5)]
     miss = 1e6 / TWO_PI * np.array(exact)
     error_hz = 1e6 * np.abs(table.misalignment_mhz[mu - 1] - miss)
-    assert error_hz.max() < 2.0  # well below 1 kHz
+    assert error_hz.max() < 0.3  # a few roundings of beta; 0.05 measured
     assert np.all(miss > 0.1)
 
 
