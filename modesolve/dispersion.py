@@ -43,7 +43,14 @@ from modesolve.band import Band, BandFunction, leja_nodes
 from modesolve.cross_section import CrossSection
 from modesolve.grid import Margins
 from modesolve.layout import Layout
-from modesolve.mode import check_core, checked_wavelength, label_modes, resolve_modes, section_notes
+from modesolve.mode import (
+    check_core,
+    checked_wavelength,
+    label_modes,
+    near_cutoff,
+    resolve_modes,
+    section_notes,
+)
 from modesolve.refine import LADDER, Alternate, Resolved, Seed, cutoff_index, find_seeds, refine
 
 __all__ = ["CurveReport", "DispersionCurve", "dispersion"]
@@ -419,10 +426,14 @@ class _Build:
         try:
             return refine(self.layout, omega, seed, self.ladder, margins=self.margins)
         except (NoGuidedMode, NotConverged) as exc:
-            raise type(exc)(
-                f"the mode can not be followed to {um_from_omega(omega):.4f} um: {exc.args[0]}; "
-                "shorten the band"
-            ) from exc
+            where = f"the mode can not be followed to {um_from_omega(omega):.4f} um"
+            cutoff = cutoff_index(self.layout, omega)
+            if near_cutoff(self.layout, omega, n_eff, cutoff):
+                raise NoGuidedMode(
+                    f"{where}: its index comes down to the cut-off {cutoff:.4f} there "
+                    f"(last solved at {um_from_omega(nearest.omega):.4f} um); shorten the band"
+                ) from exc
+            raise type(exc)(f"{where}: {exc.args[0]}") from exc
 
     def _function(self, values: list[dict], key: str, orders: int | None = None) -> BandFunction:
         taylor = np.array([v[key][:orders] for v in values])

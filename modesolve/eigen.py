@@ -25,10 +25,11 @@ from modesolve.operators import Operators, Topology, Walls
 
 __all__ = ["Factorisation", "Pencil", "RawMode", "dissection_order", "nearest_modes", "polish"]
 
-#: Largest residual of an eigenpair, relative to |beta^2| of the normalised vector.
+#: Largest residual of an eigenpair, beside what rounding leaves (`Pencil.residual_limit`).
 RESIDUAL_LIMIT = 1e-8
 
-LEAF = 24
+#: Sets this small are not cut further.
+LEAF = 12
 
 
 @lru_cache(maxsize=64)
@@ -151,6 +152,11 @@ class Pencil:
         )
         self.along = sum(e * m.along for e, m in zip(permittivity, operators.media, strict=True))
         self.factorisations = 0
+
+    def residual_limit(self, eigenvalue: complex) -> float:
+        """Largest residual to accept: what rounding leaves on the shortest edges, and a floor."""
+        stiffest = np.max(np.abs(self.matrix.diagonal() / self.mass.diagonal()))
+        return RESIDUAL_LIMIT + float(np.finfo(float).eps * stiffest / abs(eigenvalue))
 
     def factorise(self, shift: complex) -> Factorisation:
         """LU of A - shift Mn in the grid's own order."""

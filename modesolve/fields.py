@@ -33,9 +33,8 @@ def field_map(layout: Layout, operators: Operators, jet: Jet, walls: Walls) -> F
     """Field of a mode on its finest grid, unfolded at the mirror plane."""
     f = quarter_fields(operators, jet)
     components = [np.mean(part[0], axis=(-2, -1)) for part in (f.e_x, f.e_y, f.e_z)]
-    grid = operators.grid
-    x = 0.25 * (grid.x[1:, 1:] + grid.x[1:, :-1] + grid.x[:-1, 1:] + grid.x[:-1, :-1])[:, 0]
-    y = 0.25 * (grid.y[1:, 1:] + grid.y[1:, :-1] + grid.y[:-1, 1:] + grid.y[:-1, :-1])[0, :]
+    x, y = operators.grid.centres()
+    x, y = x[:, 0], y[0, :]
     if layout.mirror:
         # an electric wall leaves the normal component even and the tangential ones odd
         even = 1.0 if walls.left == "electric" else -1.0

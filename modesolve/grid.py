@@ -243,13 +243,25 @@ class Grid:
         """Lay a product grid over two axes; ``refinement`` multiplies the cells."""
         along_u = across.segments(margins.left, margins.right, refinement)
         along_v = up.segments(margins.bottom, margins.top, refinement)
-        chart = ProductMap(along_u, along_v)
+        return cls.on(ProductMap(along_u, along_v), _labels(along_u), _labels(along_v))
+
+    @classmethod
+    def on(cls, chart: CoordinateMap, segment_u: np.ndarray, segment_v: np.ndarray) -> Grid:
+        """The grid that a map lays, with the segment of each column and row of cells."""
         n_u, n_v = chart.shape
         x, y = chart.position(np.arange(n_u + 1.0)[:, None], np.arange(n_v + 1.0)[None, :])
-        centre = 0.25 * (x[1:, 1:] + x[1:, :-1] + x[:-1, 1:] + x[:-1, :-1])
-        arc = np.broadcast_to(chart.arc(centre)[:, :, None, None], (n_u, n_v, 2, 2))
-        metric = Metric(*_increments(x), *_increments(y), arc)
-        return cls(chart, (n_u, n_v), _labels(along_u), _labels(along_v), x, y, metric)
+        arc = chart.arc(_cell_means(x))[:, :, None, None]
+        metric = Metric(*_increments(x), *_increments(y), np.broadcast_to(arc, (n_u, n_v, 2, 2)))
+        return cls(chart, (n_u, n_v), segment_u, segment_v, x, y, metric)
+
+    def centres(self) -> tuple[np.ndarray, np.ndarray]:
+        """Positions of the cell centres, each of shape (n_u, n_v), um."""
+        return _cell_means(self.x), _cell_means(self.y)
+
+
+def _cell_means(nodes: np.ndarray) -> np.ndarray:
+    """Mean of each cell's four corners."""
+    return 0.25 * (nodes[1:, 1:] + nodes[1:, :-1] + nodes[:-1, 1:] + nodes[:-1, :-1])
 
 
 def _increments(position: np.ndarray) -> tuple[np.ndarray, np.ndarray]:

@@ -19,7 +19,7 @@ from materials.common.constants import (
     omega_from_um,
     um_from_omega,
 )
-from materials.common.errors import NoGuidedMode, OutOfRange
+from materials.common.errors import NoGuidedMode, NotConverged, OutOfRange
 from materials.common.results import (
     ErrorBars,
     Provenance,
@@ -49,6 +49,10 @@ SHORTEST_UM, LONGEST_UM = 0.1, 100.0
 #: Modes whose coarse index lies within this of the last one wanted are resolved too,
 #: since the coarse grid may have put them in the wrong order.
 ORDER_SLACK = 0.02
+
+#: Share of the index step within which a candidate that does not hold up on finer grids
+#: is taken for a mode of the numerical box.
+NEAR_CUTOFF = 0.08
 
 
 @dataclass(frozen=True, slots=True, eq=False, repr=False, kw_only=True)
@@ -124,6 +128,10 @@ def resolve_modes(
             modes.append(refine(layout, omega, seed, ladder))
         except NoGuidedMode as exc:
             notes.append(str(exc))
+        except NotConverged as exc:
+            if not near_cutoff(layout, omega, seed.n_eff, cutoff):
+                raise
+            notes.append(f"a candidate near index {seed.n_eff:.4f} is a mode of the box: {exc}")
     modes.sort(key=lambda r: -float(np.real(r.values["beta"][0])))
     if len(modes) < count:
         notes.insert(
@@ -133,6 +141,11 @@ def resolve_modes(
         )
         return ModeScan(tuple(modes), tuple(notes))
     return ModeScan(tuple(modes[:count]), ())
+
+
+def near_cutoff(layout: Layout, omega: float, n_eff: float, cutoff: float) -> bool:
+    """Whether a coarse index lies so near the cut-off that it may be a mode of the box."""
+    return n_eff < cutoff + NEAR_CUTOFF * (float(layout.indices(omega).max()) - cutoff)
 
 
 def _last(modes: Sequence[Resolved], count: int) -> float:
@@ -168,7 +181,7 @@ def solve_modes(
     count : int
         Most modes wanted. Fewer is no error: a note on the modes says why.
     ladder : tuple of int
-        Refinements of the ladder of grids, rising, at least three.
+        Refinements of the ladder of grids, rising, at least four.
 
     Returns
     -------
