@@ -94,7 +94,10 @@ def value_lines(title: str, rows: Sequence[tuple[str, str, str]]) -> Group:
 
 def scalar_row(result: Any, name: str, label: str, unit: str) -> tuple[str, str, str]:
     """One scalar of a result for `value_lines`."""
-    return label, format_number(getattr(result, name), result.error.get(name), most=9), unit
+    value = getattr(result, name)
+    if np.isnan(value):
+        return label, "none", ""
+    return label, format_number(value, result.error.get(name), most=9), unit
 
 
 def channel_report(table: ChannelTable, band: ConversionBand, flux: PairFlux) -> Group:
@@ -109,8 +112,8 @@ def channel_report(table: ChannelTable, band: ConversionBand, flux: PairFlux) ->
         scalar_row(flux, "flux_per_s", f"{flux.counted}, whole band", "1/s"),
     ]
     reasons = dict.fromkeys(r for r in (band.reason, flux.reason) if r)
-    rows += [("  no value", reason, "") for reason in reasons]
-    return value_lines(f"Channel, {table.length_mm:g} mm, {table.pump_w:g} W", rows)
+    lines = value_lines(f"Channel, {table.length_mm:g} mm, {table.pump_w:g} W", rows)
+    return Group(lines, *(Text(f"none: {reason}") for reason in reasons))
 
 
 def ring_report(table: RingTable, results: RingResults, rows: int = 10) -> list[Any]:

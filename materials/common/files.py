@@ -222,7 +222,7 @@ def write_csv(path: str | os.PathLike[str], variables: Sequence[Variable], **abo
 def _table_axes(variables: Sequence[Variable]) -> dict[str, int]:
     """Axes of the table: those of the largest array and all that are tied to them."""
     lengths = _axes(variables)
-    chosen: set[str] = set(max(variables, key=lambda v: np.size(v.values)).dims)
+    chosen: set[str] = set(max(variables, key=lambda v: (bool(v.dims), np.size(v.values))).dims)
     for _ in lengths:
         for variable in variables:
             if chosen & set(variable.dims):

@@ -128,6 +128,14 @@ def test_scalars_alone_are_one_row(tmp_path):
     ]
 
 
+def test_a_table_of_one_row_beside_scalars(tmp_path):
+    scalar = Variable("w_um", np.array(1.55), (), "um", "wavelength")
+    column = Variable("n_eff", np.array([1.8]), ("mode",), "1", "index")
+    write_csv(tmp_path / "a.csv", [scalar, column], title="modes")
+    table = pandas.read_csv(tmp_path / "a.csv", comment="#")
+    assert table.to_dict("list") == {"mode": [0], "n_eff": [1.8]}
+
+
 def test_a_list_apart_from_the_table_goes_to_the_header(tmp_path):
     w = Variable("w_um", np.array([1.0, 2.0, 3.0]), ("w_um",), "um", "wavelength")
     for zeros in ([], [1.5], [1.2, 1.7]):

@@ -1,0 +1,355 @@
+"""The command: verbs, exit codes, what goes to stdout and what to stderr."""
+
+import io
+import os
+import pty
+import re
+import signal
+import subprocess
+import sys
+import time
+from pathlib import Path
+
+import pandas
+import pytest
+import xarray
+
+import phasematch
+from phasematch import cli
+from phasematch.mixing import LASER_CAUTION
+
+DESIGN = """
+[cross_section]
+core = "Si3N4-Luke2015"
+cladding = "SiO2-Malitson1965"
+substrate = "SiO2-Malitson1965"
+width_um = 1.6
+height_um = 0.8
+[band]
+from_um = 1.5
+to_um = 1.6
+points = 5
+[mode]
+count = 1
+[channel]
+length_mm = 10
+pump_um = 1.55
+pump_w = 0.1
+map_points = 5
+[ring]
+radius_um = 100
+q_intrinsic = 2e6
+q_coupling = 2e6
+pump_um = 1.55
+pairs = 5
+[output]
+resolution_dpi = 60
+"""
+
+
+@pytest.fixture
+def here(tmp_path, monkeypatch):
+    """A folder with design.toml, to work in."""
+    monkeypatch.chdir(tmp_path)
+    Path("design.toml").write_text(DESIGN)
+    return tmp_path
+
+
+@pytest.fixture
+def idlermap(here, capsys):
+    """Run the command in this process; gives exit code, stdout, stderr."""
+    before = signal.getsignal(signal.SIGTERM)
+
+    def run(*arguments):
+        with pytest.raises(SystemExit) as stopped:
+            cli.main(list(arguments))
+        out, err = capsys.readouterr()
+        return stopped.value.code, out, err
+
+    yield run
+    signal.signal(signal.SIGTERM, before)
+
+
+# ---------------------------------------------------------------- verbs
+
+
+def test_run_writes_everything_and_says_it_short(idlermap, here):
+    code, out, err = idlermap("run", "design.toml", "-o", "out")
+    assert code == 0
+    written = {p.name for p in (here / "out").iterdir()}
+    assert written == {
+        "modes.csv", "mode_field.h5", "mode_field.png",
+        "dispersion.csv", "dispersion.h5", "dispersion.png",
+        "channel_map.h5", "channel_map.png", "conversion_band.csv", "pair_flux.csv",
+        "ring_pairs.csv", "ring_pairs.h5", "ring_misalignment.png",
+        "detuning_map.h5", "detuning_map.png", "ring_dispersion.csv",
+        "design.toml", "summary.txt", "files.txt",
+    }  # fmt: skip
+    assert set((here / "out" / "files.txt").read_text().split()) == written
+    assert re.search(r"TE0 +1\.83454\d+\(\d+\)", out)
+    assert " ".join(LASER_CAUTION.split()) in " ".join(out.split())
+    assert max(map(len, out.splitlines())) <= 80
+    assert "\x1b" not in out + err
+    assert all(line.startswith("idlermap: ") for line in err.splitlines())
+    assert "modes at 1.55 um" in err and "modes at 1.55 um" not in out
+    summary = (here / "out" / "summary.txt").read_text()
+    assert LASER_CAUTION in summary and "Si3N4-Luke2015" in summary
+    for name, columns in (
+        ("modes", {"n_eff", "n_eff_error", "loss_db_per_cm"}),
+        ("dispersion", {"wavelength_um", "n_eff", "n_eff_error", "gamma_per_w_m"}),
+        ("ring_pairs", {"mu", "misalignment_mhz", "misalignment_mhz_error", "aligned"}),
+    ):
+        table = pandas.read_csv(here / "out" / f"{name}.csv", comment="#")
+        assert columns <= set(table.columns), name
+        assert len(table) == {"modes": 1, "dispersion": 5, "ring_pairs": 5}[name]
+    for name, variable, shape in (
+        ("dispersion", "n_eff", (5,)),
+        ("channel_map", "efficiency_db", (5, 5)),
+        ("ring_pairs", "misalignment_mhz_error", (5,)),
+    ):
+        with xarray.open_dataset(here / "out" / f"{name}.h5", engine="h5netcdf") as data:
+            assert data[variable].shape == shape
+            assert data[variable].attrs["units"]
+
+
+def test_resolved_design_runs_again_with_the_same_numbers(idlermap, here):
+    assert idlermap("run", "design.toml", "-o", "one", "--set", 'output.figures="none"')[0] == 0
+    assert idlermap("run", "one/design.toml", "-o", "two")[0] == 0
+    for name in ("dispersion", "ring_pairs", "modes"):
+        tables = [
+            pandas.read_csv(here / folder / f"{name}.csv", comment="#") for folder in ("one", "two")
+        ]
+        pandas.testing.assert_frame_equal(*tables, check_exact=True)
+    text = (here / "one" / "design.toml").read_text()
+    assert '# materials: ["Si3N4-Luke2015", "SiO2-Malitson1965"]' in text
+    assert "points = 5" in text and "slab_um = 0.0" in text
+
+
+def test_a_full_folder_is_refused_before_any_work(idlermap, here):
+    (here / "out").mkdir()
+    (here / "out" / "mine.txt").write_text("mine")
+    code, out, err = idlermap("run", "design.toml", "-o", "out")
+    assert (code, out) == (cli_codes().STORAGE, "")
+    assert err == (
+        "idlermap: the output folder out is not empty; give another, or --replace to replace it\n"
+    )
+    arguments = ["run", "design.toml", "-o", "out", "--replace", "--set", 'output.figures="none"']
+    assert idlermap(*arguments)[0] == 0
+    assert (here / "out" / "mine.txt").read_text() == "mine"
+    assert (here / "out" / "dispersion.csv").exists()
+
+
+def test_modes_columns_in_order(idlermap):
+    code, out, _ = idlermap("modes", "design.toml", "-o", "modes.csv")
+    assert code == 0
+    header = out.splitlines()[1]
+    places = [header.index(word) for word in ("mode", "n_eff", "D ", "gamma", "area", "loss")]
+    assert places == sorted(places)
+    assert pandas.read_csv("modes.csv", comment="#")["mode"].tolist() == ["TE0"]
+
+
+@pytest.mark.parametrize(
+    ("verb", "words"),
+    [
+        ("dispersion", ["Dispersion of TE0", "1.525", "Zero dispersion: none"]),
+        ("channel", ["Channel, 10 mm, 0.1 W", "best signal", "Caution"]),
+        ("ring", ["D2/2pi", "Pairs, cold", "linewidths"]),
+    ],
+)
+def test_single_verbs(idlermap, verb, words):
+    code, out, _ = idlermap(verb, "design.toml", "-o", "result.h5")
+    assert code == 0
+    for word in words:
+        assert word in out
+    assert ("Caution" in out) == (verb == "channel")  # goes with a pump power
+    with xarray.open_dataset("result.h5", engine="h5netcdf") as data:
+        assert data.sizes
+    code, _, err = idlermap(verb, "design.toml", "-o", "result.h5")
+    assert code == cli_codes().STORAGE and "result.h5 exists" in err
+
+
+def test_export_writes_csv_to_stdout_or_a_file(idlermap, here):
+    code, out, _ = idlermap("export", "curve", "design.toml", "--points", "3")
+    assert code == 0
+    table = pandas.read_csv(io.StringIO(out), comment="#")
+    assert {"n_eff", "n_group", "beta2_ps2_per_km", "dispersion_ps_per_nm_km"} <= set(table)
+    assert {"effective_area_um2", "gamma_per_w_m"} <= set(table)
+    assert table["wavelength_um"].tolist() == [1.5, 1.55, 1.6]
+    code, out, _ = idlermap("export", "betas", "design.toml", "-o", "betas.csv")
+    assert (code, out) == (0, "")
+    betas = pandas.read_csv("betas.csv", comment="#")
+    assert betas["order"].tolist() == [0, 1, 2, 3, 4]
+    # beta2 of the table about the pump and of the curve are one number
+    assert betas["beta"][2] == pytest.approx(table["beta2_ps2_per_km"][1], rel=1e-9)
+
+
+def test_export_taper_marks_what_failed(idlermap):
+    code, out, err = idlermap(
+        "export", "taper", "design.toml", "--set", 'mode.label="TE1"',
+        "--from-um", "0.6", "--to-um", "1.6", "--points", "2",
+    )  # fmt: skip
+    assert code == cli_codes().FAILED_POINTS
+    table = pandas.read_csv(io.StringIO(out), comment="#")
+    assert table["n_eff"].isna().tolist() == [True, False]
+    assert "no mode TE1" in table["reason"][0]
+    assert "1 of 2 widths have no value" in err
+
+
+def test_new_check_and_resolved(idlermap):
+    assert idlermap("new", "start.toml")[0] == 0
+    assert idlermap("check", "start.toml") == (0, "start.toml: good\n", "")
+    code, _, err = idlermap("new", "start.toml")
+    assert code == cli_codes().STORAGE and "start.toml exists" in err
+    code, out, _ = idlermap("check", "--resolved", "start.toml")
+    assert code == 0 and 'label = "TE0"' in out
+
+
+def test_materials(idlermap):
+    code, out, _ = idlermap("materials", "list", "malitson")
+    assert code == 0 and "SiO2-Malitson1965" in out and "Luke" not in out
+    code, out, _ = idlermap("materials", "show", "SiO2-Malitson1965")
+    assert code == 0 and "1.4440236" in out and "Malitson, J. Opt. Soc. Am." in out
+    code, _, err = idlermap("materials", "show", "SiO2-Malitson1956")
+    assert code == cli_codes().USAGE and "SiO2-Malitson1965" in err
+
+
+def test_version_and_help(idlermap):
+    code, out, _ = idlermap("--version")
+    assert code == 0 and out.startswith("idlermap, version ")
+    code, out, _ = idlermap("--help")
+    assert code == 0
+    for number in (0, 1, 2, 3, 4, 5, 130):
+        assert re.search(rf"^ +{number}  ", out, re.MULTILINE), number
+    assert "_IDLERMAP_COMPLETE=bash_source" in out
+    assert max(map(len, out.splitlines())) <= 80
+
+
+# ---------------------------------------------------------------- exit codes
+
+
+def cli_codes():
+    from phasematch import cli_parts
+
+    return cli_parts
+
+
+def test_codes_are_the_documented_numbers():
+    codes = cli_codes()
+    assert (codes.BUG, codes.USAGE, codes.FAILED_POINTS) == (1, 2, 3)
+    assert (codes.RANGE, codes.STORAGE, codes.INTERRUPTED) == (4, 5, 130)
+
+
+@pytest.mark.parametrize(
+    ("arguments", "code", "words"),
+    [
+        (["modes", "none.toml"], 2, "does not exist"),
+        (["modes"], 2, "Missing argument"),
+        (["nonsense"], 2, "No such command"),
+        (["modes", "design.toml", "-o", "modes.txt"], 2, "must end in .csv or .h5"),
+        (["modes", "design.toml", "--set", "width=2"], 2, "write table.key=value"),
+        (["modes", "design.toml", "--wavelength-um", "9"], 4, "9 um is outside"),
+        (["modes", "design.toml", "--wavelength-um", "nan"], 4, "wavelength_um = nan"),
+        (["modes", "design.toml", "--count", "0"], 4, "count = 0"),
+        (["run", "design.toml", "-o", "o", "--set", 'mode.label="TM3"'], 4, "TM3"),
+        (["modes", "design.toml", "-o", "no/where.csv"], 5, "no/where.csv"),
+        (["run", "design.toml", "-o", "design.toml"], 5, "is a file"),
+        (["run", "design.toml", "-o", ".", "--replace"], 5, "working in"),
+    ],
+)
+def test_errors_are_lines_on_stderr_with_their_code(idlermap, here, arguments, code, words):
+    found, out, err = idlermap(*arguments)
+    assert (found, out) == (code, "")
+    assert words in err
+    assert "Traceback" not in err
+    assert sorted(p.name for p in here.iterdir()) == ["design.toml"]
+
+
+def test_a_bad_design_is_listed_line_by_line(idlermap):
+    Path("bad.toml").write_text(
+        DESIGN.replace("1.6\nheight", "-1.6\nheight").replace("pairs", "pair")
+    )
+    code, out, err = idlermap("run", "bad.toml", "-o", "out")
+    assert (code, out) == (2, "")
+    lines = err.splitlines()
+    assert lines == [
+        "bad.toml: cross_section.width_um = -1.6: must be a number from 0.005 to 100 um",
+        "bad.toml: ring.pair = 5: no such key in [ring]; did you mean pairs?",
+    ]
+    code, _, again = idlermap("check", "bad.toml", "design.toml")
+    assert (code, again) == (2, err)
+
+
+def test_missing_table_for_a_verb(idlermap):
+    Path("bare.toml").write_text(DESIGN.split("[channel]")[0])
+    for verb in ("channel", "ring"):
+        code, _, err = idlermap(verb, "bare.toml")
+        assert code == 2 and f"bare.toml: [{verb}]: this table is missing" in err
+
+
+def test_a_bug_says_so(idlermap, monkeypatch):
+    monkeypatch.setattr("phasematch.cli.read", lambda *a: 1 / 0)
+    code, _, err = idlermap("modes", "design.toml")
+    assert code == 1
+    assert "ZeroDivisionError" in err and "please report" in err
+
+
+@pytest.mark.parametrize(("number", "code"), [(signal.SIGINT, 130), (signal.SIGTERM, 143)])
+def test_interrupted_runs_leave_nothing(here, number, code):
+    root = Path(phasematch.__file__).parents[1]
+    with subprocess.Popen(
+        [sys.executable, "-c", "from phasematch.cli import main; main()",
+         "run", "design.toml", "-o", "out"],
+        stderr=subprocess.PIPE, text=True, cwd=here,
+        env={**os.environ, "PYTHONPATH": str(root)},
+    ) as process:  # fmt: skip
+        assert "modes at" in process.stderr.readline()
+        process.send_signal(number)
+        rest = process.stderr.read()
+    assert process.returncode == code
+    assert "Traceback" not in rest
+    assert sorted(p.name for p in here.iterdir()) == ["design.toml"]
+
+
+# ---------------------------------------------------------------- terminal
+
+
+def on_a_terminal(folder, *arguments, **environment):
+    """Run with stdout and stderr on a terminal; what it showed, as text."""
+    root = Path(phasematch.__file__).parents[1]
+    ours, theirs = pty.openpty()
+    kept = {k: v for k, v in os.environ.items() if k not in ("NO_COLOR", "COLUMNS")}
+    process = subprocess.Popen(
+        [sys.executable, "-c", "from phasematch.cli import main; main()", *arguments],
+        stdout=theirs, stderr=theirs, cwd=folder,
+        env={**kept, "PYTHONPATH": str(root), "TERM": "xterm-256color", **environment},
+    )  # fmt: skip
+    os.close(theirs)
+    shown = b""
+    deadline = time.monotonic() + 120
+    while time.monotonic() < deadline:
+        try:
+            piece = os.read(ours, 4096)
+        except OSError:  # the terminal closes with its last user
+            break
+        if not piece:
+            break
+        shown += piece
+    os.close(ours)
+    assert process.wait() == 0
+    return shown.decode()
+
+
+COLOUR = re.compile(r"\x1b\[[0-9;]*\b(3[0-7]|38;5;\d+|9[0-7])m")
+
+
+def test_no_color_is_honoured(here):
+    assert COLOUR.search(on_a_terminal(here, "modes", "design.toml"))
+    assert not COLOUR.search(on_a_terminal(here, "modes", "design.toml", NO_COLOR="1"))
+
+
+def test_only_lines_when_stderr_is_no_terminal(run_idlermap, tmp_path):
+    (tmp_path / "design.toml").write_text(DESIGN)
+    done = run_idlermap("modes", "design.toml", environment={"FORCE_COLOR": ""})
+    assert done.returncode == 0
+    assert "\x1b" not in done.stdout + done.stderr
+    assert done.stderr.splitlines()[0] == "idlermap: modes at 1.55 um"

@@ -1,0 +1,56 @@
+"""Every shipped design runs as the README says, and gives the numbers it should."""
+
+from pathlib import Path
+
+import pandas
+import pytest
+
+EXAMPLES = Path(__file__).parents[2] / "examples"
+DESIGNS = sorted(path.name for path in EXAMPLES.glob("*.toml"))
+
+#: File, row chosen by (column, value), column, value, relative tolerance. Own snapshots of
+#: the shipped designs: they show that the examples work, they validate nothing.
+CHECKS = {
+    "nitride_ring.toml": [
+        ("modes.csv", ("mode", "TE0"), "n_eff", 1.8072028, 2e-7),
+        ("ring_pairs.csv", ("mu", 10), "misalignment_mhz", 106.951, 5e-4),
+        ("ring_dispersion.csv", None, "d2_mhz", 1.07075, 5e-4),
+    ],
+    "silicon_converter.toml": [
+        ("modes.csv", ("mode", "TE0"), "n_eff", 2.8821736, 5e-7),
+        ("conversion_band.csv", None, "width_thz", 23.998, 1e-3),
+        ("conversion_band.csv", None, "peak_efficiency_db", -28.450, 1e-4),
+    ],
+}
+
+
+def test_every_design_is_checked():
+    assert set(DESIGNS) == set(CHECKS)
+
+
+@pytest.mark.snapshot
+@pytest.mark.parametrize("name", DESIGNS)
+def test_example(run_idlermap, tmp_path, name):
+    done = run_idlermap("run", str(EXAMPLES / name), "-o", "out")
+    assert done.returncode == 0, done.stderr
+    for file, row, column, expected, tolerance in CHECKS[name]:
+        table = pandas.read_csv(tmp_path / "out" / file, comment="#")
+        chosen = table if row is None else table[table[row[0]] == row[1]]
+        assert len(chosen) == 1
+        value, bar = chosen[column].item(), chosen[f"{column}_error"].item()
+        assert abs(value - expected) <= tolerance * abs(expected)
+        assert 0 < bar < tolerance * abs(expected)
+    for figure in ("mode_field", "dispersion", "channel_map"):
+        assert (tmp_path / "out" / f"{figure}.png").stat().st_size > 10_000
+
+
+@pytest.mark.snapshot
+def test_aligned_pairs_of_the_nitride_ring(run_idlermap, tmp_path):
+    """13 pairs stay within a linewidth; the misalignment is D2 mu^2 to lowest order."""
+    design = str(EXAMPLES / "nitride_ring.toml")
+    done = run_idlermap("ring", design, "-o", "pairs.csv", "--set", "mode.count=1")
+    assert done.returncode == 0, done.stderr
+    pairs = pandas.read_csv(tmp_path / "pairs.csv", comment="#")
+    assert pairs["aligned"].sum() == 13 and pairs["aligned"][:13].all()
+    # D4 mu^4/12 is below 1e-4 of it at mu = 2
+    assert pairs["misalignment_mhz"][1] == pytest.approx(4 * pairs["misalignment_mhz"][0], rel=1e-3)
