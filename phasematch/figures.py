@@ -166,9 +166,11 @@ def dispersion_figure(table: DispersionTable) -> Figure:
                 color=ORANGE, alpha=0.12, linewidth=0, label="anomalous",
             )  # fmt: skip
             last.legend(loc="lower right")
+        slope = np.gradient(table.dispersion_ps_per_nm_km, x)
         for zero in table.zero_dispersion_um:
             last.plot(zero, 0.0, "o", color=ORANGE, markersize=4)
-            last.annotate(f"{zero:.4f} µm", (zero, 0.0), (4, 5), textcoords="offset points")
+            beside = (5, 5) if np.interp(zero, x, slope) < 0 else (5, -10)  # off the curve
+            last.annotate(f"{zero:.4f} µm", (zero, 0.0), beside, textcoords="offset points")
         last.set_xlabel("wavelength (µm)")
         last.set_xlim(x[0], x[-1])
         rows[0].set_title(f"{table.mode}")

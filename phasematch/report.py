@@ -58,11 +58,11 @@ def modes_report(result: ModeTable) -> Table:
         "mode", "n_eff", "D ps/(nm km)", "gamma 1/(W m)", "area um2", "loss dB/cm",
     )  # fmt: skip
     names = (
-        "n_eff", "dispersion_ps_per_nm_km", "gamma_per_w_m", "effective_area_um2",
-        "loss_db_per_cm",
+        "dispersion_ps_per_nm_km", "gamma_per_w_m", "effective_area_um2", "loss_db_per_cm",
     )  # fmt: skip
     for i, label in enumerate(result.mode):
-        table.add_row(str(label), *_cells(result, names, i, most=10))
+        index = _cells(result, ["n_eff"], i, most=10)
+        table.add_row(str(label), *index, *_cells(result, names, i, most=7))
     return table
 
 

@@ -250,7 +250,7 @@ def test_codes_are_the_documented_numbers():
         (["modes", "design.toml", "--wavelength-um", "9"], 4, "9 um is outside"),
         (["modes", "design.toml", "--wavelength-um", "nan"], 4, "wavelength_um = nan"),
         (["modes", "design.toml", "--count", "0"], 4, "count = 0"),
-        (["run", "design.toml", "-o", "o", "--set", 'mode.label="TM3"'], 4, "TM3"),
+        (["run", "design.toml", "-o", "o", "--set", 'mode.label="TM5"'], 4, "TM5"),
         (["modes", "design.toml", "-o", "no/where.csv"], 5, "no/where.csv"),
         (["run", "design.toml", "-o", "design.toml"], 5, "is a file"),
         (["run", "design.toml", "-o", ".", "--replace"], 5, "working in"),
