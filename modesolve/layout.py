@@ -85,6 +85,16 @@ class Layout:
         }
         return tuple(side for side, end in ends.items() if end == "open")
 
+    def corner_media(self) -> int:
+        """Most media that meet in one corner; 1 where there is no corner."""
+        fill = np.array(self.fill)
+        corners = [
+            np.unique(fill[i : i + 2, j : j + 2]).size
+            for i in range(fill.shape[0] - 1)
+            for j in range(fill.shape[1] - 1)
+        ]
+        return max(corners, default=1)
+
     def column(self, index: int) -> Layout:
         """The stack of column ``index``, uniform across: a slab one cell wide."""
         across = Axis((0.0, SLAB_WIDTH_UM), "wall", "wall", uniform=True, grading=EVEN)
