@@ -9,10 +9,12 @@ The rooms are in the order of the work::
     eigen          ordering, factorisation, nearest modes, left vectors
     jets           frequency series of a mode
     integrals      areas, gamma and weights as frequency series
+    seeds          candidates, cut-off, margins, recognising a mode
     refine         the ladder of grids and the error bar
     mode           solve_modes and its result (fields: its field map)
     band           interpolation over frequency
-    dispersion     a curve over a band
+    curve          a dispersion curve as a result
+    dispersion     solving one over a band
 
 Examples
 --------
@@ -26,7 +28,8 @@ Examples
 
 import modesolve.guard  # noqa: F401 - first: it looks for a hidden package
 from modesolve.cross_section import CrossSection
-from modesolve.dispersion import DispersionCurve, dispersion
+from modesolve.curve import DispersionCurve
+from modesolve.dispersion import dispersion
 from modesolve.fields import FieldMap
 from modesolve.mode import Mode, solve_modes
 

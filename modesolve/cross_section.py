@@ -103,16 +103,20 @@ class CrossSection:
             )
         self._check_later_shapes()
         if self.temperature_degc is not None:
-            put(self, "temperature_degc", _number(self.temperature_degc, "temperature_degc", "degC"))
+            put(
+                self, "temperature_degc", _number(self.temperature_degc, "temperature_degc", "degC")
+            )
 
     def _check_later_shapes(self) -> None:
         if _number(self.sidewall_deg, "sidewall_deg", "deg") != 90.0:
             raise InputError(
-                f"sidewall_deg = {self.sidewall_deg:g}: this version solves vertical walls; set it to 90"
+                f"sidewall_deg = {self.sidewall_deg:g}: this version solves vertical walls; "
+                "set it to 90"
             )
         if not 0.0 <= _number(self.width_at, "width_at", "") <= 1.0:
             raise OutOfRange(
-                f"width_at = {self.width_at:g}: allowed 0 (bottom of the etched wall) to 1 (its top)"
+                f"width_at = {self.width_at:g}: allowed 0 (bottom of the etched wall) "
+                "to 1 (its top)"
             )
         if self.bend_radius_um is not None:
             raise InputError(
@@ -195,7 +199,9 @@ def _number(value: object, name: str, unit: str) -> float:
     try:
         number = float(value)  # type: ignore[arg-type]
     except (TypeError, ValueError) as exc:
-        raise InputError(f"{name} = {value!r}: give a number {f'in {unit}' if unit else ''}") from exc
+        raise InputError(
+            f"{name} = {value!r}: give a number {f'in {unit}' if unit else ''}"
+        ) from exc
     if not math.isfinite(number):
         raise OutOfRange(f"{name} = {value}: give a finite number {f'in {unit}' if unit else ''}")
     return number

@@ -147,9 +147,7 @@ class Pencil:
         self.permittivity = permittivity
         self.matrix = operators.pencil(k0, permittivity)
         self.mass = operators.inverse_mu
-        self.across = sum(
-            e * m.across for e, m in zip(permittivity, operators.media, strict=True)
-        )
+        self.across = sum(e * m.across for e, m in zip(permittivity, operators.media, strict=True))
         self.along = sum(e * m.along for e, m in zip(permittivity, operators.media, strict=True))
         self.factorisations = 0
 

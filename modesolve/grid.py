@@ -31,6 +31,7 @@ from scipy.special import betainc
 __all__ = ["EVEN", "Axis", "CoordinateMap", "Grading", "Grid", "Margins", "Metric", "ProductMap"]
 
 End = Literal["wall", "mirror", "open"]
+Kind = Literal["inner", "from_mirror", "outer_low", "outer_high"]
 
 
 @dataclass(frozen=True, slots=True)
@@ -101,7 +102,7 @@ class Axis:
         for i, (a, b) in enumerate(pairwise(self.walls)):
             mirrored = i == 0 and self.low == "mirror"
             cells = (grading.cells if mirrored else 2 * grading.cells) * refinement
-            kind = "from_mirror" if mirrored else "inner"
+            kind: Kind = "from_mirror" if mirrored else "inner"
             out.append(Segment(kind, a, b - a, 1 if self.uniform else cells, grading))
         if self.high == "open":
             outer = grading.cells * refinement
@@ -113,7 +114,7 @@ class Axis:
 class Segment:
     """One analytic piece of an axis: the position as a function of s in 0..1."""
 
-    kind: Literal["inner", "from_mirror", "outer_low", "outer_high"]
+    kind: Kind
     start: float
     length: float
     cells: int
@@ -163,7 +164,8 @@ class ProductMap:
         """x and y in um at logical points; ``u`` and ``v`` broadcast."""
         x = _follow(self._along_u, np.asarray(u, dtype=float))
         y = _follow(self._along_v, np.asarray(v, dtype=float))
-        return tuple(np.broadcast_arrays(x, y))
+        x, y = np.broadcast_arrays(x, y)
+        return x, y
 
     def arc(self, x: np.ndarray) -> np.ndarray:
         """1: the guide is straight."""

@@ -131,13 +131,16 @@ def _squared_over(a: np.ndarray, b: np.ndarray) -> np.ndarray:
 
 def _nonlinear(layout, operators, jet, f, fourth, power, k0, halves) -> dict[str, np.ndarray]:
     """gamma and the nonlinear area."""
-    dot = sum(series.multiply(a, a) for a in (f.e_x, f.e_y, f.e_z))
+    dot = series.multiply(f.e_x, f.e_x) + series.multiply(f.e_y, f.e_y)
+    dot = dot + series.multiply(f.e_z, f.e_z)
     density = (2.0 * fourth + _modulus(dot)) / 3.0
     cells = _over_cells(density * f.area * f.arc)
     n2 = [medium.n2_m2_per_w for medium in layout.media]
     core_n2 = n2[layout.core]
     # only ratios to the core's n2 enter the area; with no n2 at all the core counts alone
-    relative = [(v or 0.0) / core_n2 if core_n2 else float(i == layout.core) for i, v in enumerate(n2)]
+    relative = [
+        (v or 0.0) / core_n2 if core_n2 else float(i == layout.core) for i, v in enumerate(n2)
+    ]
     total = np.zeros(k0.shape)
     for share, eps, medium in zip(relative, jet.permittivity, operators.media, strict=True):
         if share:

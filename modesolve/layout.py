@@ -7,7 +7,7 @@ run through the same grid, operators and ladder.
 
 from __future__ import annotations
 
-from dataclasses import dataclass, replace
+from dataclasses import dataclass, field, replace
 
 import numpy as np
 
@@ -49,7 +49,7 @@ class Layout:
     media: tuple[Medium, ...]
     fill: tuple[tuple[int, ...], ...]
     core: int
-    walls: Walls = Walls()
+    walls: Walls = field(default_factory=Walls)
     mirror: bool = False
 
     def grid(self, margins: Margins, refinement: int) -> Grid:
@@ -105,7 +105,7 @@ class Layout:
 
         Above and below that is the outer medium; to the left and right it is the
         highest index of the outer media of the stack there, raised by
-        ``modesolve.refine.cutoff_index`` to a slab mode's where the stack guides one.
+        ``modesolve.seeds.cutoff_index`` to a slab mode's where the stack guides one.
         """
         n = self.indices(omega)
         if side == "bottom":

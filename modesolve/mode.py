@@ -5,7 +5,6 @@ from __future__ import annotations
 import math
 from collections.abc import Sequence
 from dataclasses import dataclass, field
-from types import MappingProxyType
 from typing import Any
 
 import numpy as np
@@ -31,15 +30,8 @@ from materials.common.results import (
 from modesolve.cross_section import CrossSection
 from modesolve.fields import FieldMap, field_map
 from modesolve.layout import Layout
-from modesolve.refine import (
-    LADDER,
-    Resolved,
-    Seed,
-    SolveReport,
-    cutoff_index,
-    find_seeds,
-    refine,
-)
+from modesolve.refine import LADDER, Resolved, SolveReport, refine
+from modesolve.seeds import cutoff_index, find_seeds, near_cutoff
 
 __all__ = ["Mode", "ModeScan", "label_modes", "resolve_modes", "solve_modes"]
 
@@ -49,10 +41,6 @@ SHORTEST_UM, LONGEST_UM = 0.1, 100.0
 #: Modes whose coarse index lies within this of the last one wanted are resolved too,
 #: since the coarse grid may have put them in the wrong order.
 ORDER_SLACK = 0.02
-
-#: Share of the index step within which a candidate that does not hold up on finer grids
-#: is taken for a mode of the numerical box.
-NEAR_CUTOFF = 0.08
 
 
 @dataclass(frozen=True, slots=True, eq=False, repr=False, kw_only=True)
@@ -141,11 +129,6 @@ def resolve_modes(
         )
         return ModeScan(tuple(modes), tuple(notes))
     return ModeScan(tuple(modes[:count]), ())
-
-
-def near_cutoff(layout: Layout, omega: float, n_eff: float, cutoff: float) -> bool:
-    """Whether a coarse index lies so near the cut-off that it may be a mode of the box."""
-    return n_eff < cutoff + NEAR_CUTOFF * (float(layout.indices(omega).max()) - cutoff)
 
 
 def _last(modes: Sequence[Resolved], count: int) -> float:

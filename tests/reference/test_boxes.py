@@ -13,7 +13,8 @@ from layouts import box, observed_orders
 import materials
 from materials.common.constants import C_UM_PER_PS, omega_from_um
 from modesolve.grid import EVEN, Grading
-from modesolve.refine import find_seeds, refine, solve_level
+from modesolve.refine import refine, solve_level
+from modesolve.seeds import find_seeds
 
 SOURCE = pytest.mark.source("Collin, Field Theory of Guided Waves, ch. 6", "computed", "16")
 FIRST = (0.6, 0.5, 0.2, 2.0, 1.0, 1.0)

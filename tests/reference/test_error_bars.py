@@ -76,8 +76,10 @@ def test_errors_lie_inside_their_bars_and_bars_are_not_idle():
     pairs = np.array([*slab_pairs(), *box_pairs(), *channel_pairs()])
     inside = pairs[:, 0] <= pairs[:, 1]
     tight = pairs[:, 1] < 30.0 * pairs[:, 0]
-    print(f"{inside.sum()} of {len(pairs)} errors inside their bars, "
-          f"{tight.sum()} bars below thirty errors")
+    print(
+        f"{inside.sum()} of {len(pairs)} errors inside their bars, "
+        f"{tight.sum()} bars below thirty errors"
+    )
     assert len(pairs) > 150
     assert inside.mean() >= 0.95
     assert tight.mean() > 0.5

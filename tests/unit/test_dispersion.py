@@ -16,7 +16,7 @@ from materials.common.errors import (
 )
 from modesolve import CrossSection, dispersion, solve_modes
 from modesolve.band import Band, BandFunction, leja_nodes
-from modesolve.dispersion import COLUMNS
+from modesolve.curve import COLUMNS
 
 SILICA, NITRIDE = "SiO2-Malitson1965", "Si3N4-Luke2015"
 

@@ -11,8 +11,9 @@ from modesolve.grid import EVEN, Axis, Grid, Margins
 def grid(refinement=3, **margins):
     across = Axis((0.0, 0.8), low="mirror", high="open")
     up = Axis((0.0, 0.3, 0.8))
-    return Grid.build(across, up, Margins(**{"right": 2.0, "bottom": 1.5, "top": 2.5, **margins}),
-                      refinement)
+    return Grid.build(
+        across, up, Margins(**{"right": 2.0, "bottom": 1.5, "top": 2.5, **margins}), refinement
+    )
 
 
 def test_walls_lie_on_grid_lines_and_lines_rise():

@@ -5,6 +5,7 @@ from __future__ import annotations
 import dataclasses
 import math
 import pickle
+from itertools import pairwise
 
 import numpy as np
 import pytest
@@ -29,7 +30,7 @@ def modes():
 
 def test_modes_come_in_falling_index_with_labels(modes):
     assert [m.label for m in modes] == ["TE0", "TM0", "TE1", "TM1"]
-    assert all(a.n_eff > b.n_eff for a, b in zip(modes[:-1], modes[1:], strict=True))
+    assert all(a.n_eff > b.n_eff for a, b in pairwise(modes))
     assert all((m.te_fraction >= 0.5) == m.label.startswith("TE") for m in modes)
 
 

@@ -1,0 +1,260 @@
+"""A dispersion curve as a result: index, dispersion, areas and gamma over a band.
+
+A curve is a set of functions of frequency. It keeps the curves it would be under each
+change that its error bar stands for, so the bar of any figure derived from it follows by
+deriving that figure from those as well.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, field
+from functools import partial
+from typing import Any
+
+import numpy as np
+
+from materials.common.constants import (
+    C_UM_PER_PS,
+    PER_UM_TO_PER_KM,
+    dispersion_from_beta2,
+    omega_from_um,
+    um_from_omega,
+)
+from materials.common.errors import OutOfRange
+from materials.common.results import ErrorBars, Provenance, Result, Variable
+from modesolve.band import Band, BandFunction
+from modesolve.cross_section import CrossSection
+
+__all__ = ["COLUMNS", "CurveReport", "DispersionCurve"]
+
+#: Points of a written table.
+TABLE_POINTS = 201
+
+#: Methods of a curve that give one number a wavelength: long name, unit.
+COLUMNS = {
+    "n_eff": ("effective index", "1"),
+    "n_group": ("group index", "1"),
+    "beta2_ps2_per_km": ("group-velocity dispersion", "ps2/km"),
+    "beta3_ps3_per_km": ("third-order dispersion", "ps3/km"),
+    "beta4_ps4_per_km": ("fourth-order dispersion", "ps4/km"),
+    "dispersion_ps_per_nm_km": ("dispersion D", "ps/(nm km)"),
+    "effective_area_um2": ("effective area", "um2"),
+    "intensity_area_um2": ("intensity-form area", "um2"),
+    "power_area_um2": ("power-form area", "um2"),
+    "gamma_per_w_m": ("nonlinear coefficient", "1/(W m)"),
+    "te_fraction": ("TE fraction", "1"),
+    "core_power_fraction": ("power in the core", "1"),
+}
+
+
+@dataclass(frozen=True, slots=True)
+class CurveReport:
+    """What a curve cost and how well it closed.
+
+    ``held_out_n_eff`` and ``held_out_beta2_ps2_per_km`` are the largest differences
+    between the last node's solution and what the curve without it foretold there.
+    """
+
+    nodes_um: tuple[float, ...]
+    factorisations: int
+    unknowns: int
+    residual: float
+    held_out_n_eff: float
+    held_out_beta2_ps2_per_km: float
+    seconds: float
+
+
+@dataclass(frozen=True, slots=True, eq=False, repr=False)
+class DispersionCurve(Result):
+    """Effective index, dispersion, areas and gamma of one mode over a band.
+
+    The methods take vacuum wavelengths in um, scalars or arrays, and raise `OutOfRange`
+    outside the band. ``error`` has the same keys as the methods; each entry is a
+    function of wavelength that gives the absolute error bar.
+
+    Attributes
+    ----------
+    mode : str
+        Label, given at ``reference_um``; it stays with the mode.
+    band_um : tuple of float
+        Shortest and longest wavelength.
+    alternates : tuple of (name, weight, DispersionCurve)
+        The curve under each change its error bar stands for. The bar of any figure F
+        derived from a curve is the sum of weight times |F(alternate) - F(curve)|.
+    """
+
+    mode: str
+    band: Band
+    functions: dict[str, BandFunction]
+    section: CrossSection
+    reference_um: float
+    report: CurveReport
+    alternates: tuple[tuple[str, float, DispersionCurve], ...] = ()
+    notes: tuple[str, ...] = ()
+    provenance: Provenance | None = None
+    label: str = field(default="", kw_only=True)
+
+    @property
+    def inputs(self) -> dict[str, Any]:
+        """What was asked for, as plain values."""
+        short, long = self.band_um
+        return {
+            **self.section.describe(),
+            "mode": self.mode,
+            "band_um": [short, long],
+            "reference_um": self.reference_um,
+        }
+
+    @property
+    def band_um(self) -> tuple[float, float]:
+        """Shortest and longest wavelength, um."""
+        return um_from_omega(self.band.high), um_from_omega(self.band.low)
+
+    @property
+    def band_rad_per_ps(self) -> tuple[float, float]:
+        """Lowest and highest angular frequency, rad/ps."""
+        return self.band.low, self.band.high
+
+    @property
+    def bend_radius_um(self) -> float | None:
+        """Bend radius of the section the curve was solved for."""
+        return self.section.bend_radius_um
+
+    @property
+    def error(self) -> ErrorBars:
+        """Error bars by method name, as functions of wavelength in um."""
+        bars: dict[str, Any] = {key: partial(self._bar, key) for key in COLUMNS}
+        bars["zero_dispersion_um"] = self._zero_dispersion_bar
+        return ErrorBars(bars)
+
+    def beta_rad_per_um(self, omega_rad_per_ps, derivative: int = 0):
+        """Propagation constant, or its k-th derivative, in rad/um ps^k; NaN outside the band.
+
+        beta = n omega/c, so beta^(k) = (omega n^(k) + k n^(k-1))/c, exact for the curve.
+        """
+        omega = np.asarray(omega_rad_per_ps, dtype=float)
+        n = self.functions["n_eff"]
+        value = omega * n(omega, derivative)
+        if derivative:
+            value = value + derivative * n(omega, derivative - 1)
+        slack = 1e-12 * self.band.high
+        inside = (omega >= self.band.low - slack) & (omega <= self.band.high + slack)
+        return _like(omega, np.where(inside, value / C_UM_PER_PS, np.nan))
+
+    def n_eff(self, wavelength_um):
+        """Effective index."""
+        return self._direct("n_eff", wavelength_um)
+
+    def n_group(self, wavelength_um):
+        """Group index, c dbeta/domega."""
+        return C_UM_PER_PS * self._beta(wavelength_um, 1)
+
+    def beta2_ps2_per_km(self, wavelength_um):
+        """Group-velocity dispersion, ps2/km."""
+        return PER_UM_TO_PER_KM * self._beta(wavelength_um, 2)
+
+    def beta3_ps3_per_km(self, wavelength_um):
+        """Third-order dispersion, ps3/km."""
+        return PER_UM_TO_PER_KM * self._beta(wavelength_um, 3)
+
+    def beta4_ps4_per_km(self, wavelength_um):
+        """Fourth-order dispersion, ps4/km."""
+        return PER_UM_TO_PER_KM * self._beta(wavelength_um, 4)
+
+    def dispersion_ps_per_nm_km(self, wavelength_um):
+        """Dispersion D = -(2 pi c/lambda^2) beta2, ps/(nm km)."""
+        wavelength = np.asarray(wavelength_um, dtype=float)
+        return _like(
+            wavelength, dispersion_from_beta2(self.beta2_ps2_per_km(wavelength), wavelength)
+        )
+
+    def effective_area_um2(self, wavelength_um):
+        """Nonlinear effective area 2 pi n2_core/(lambda gamma), um2."""
+        return self._direct("effective_area_um2", wavelength_um)
+
+    def intensity_area_um2(self, wavelength_um):
+        """Area in intensity form, (int |e|^2)^2 / int |e|^4, um2."""
+        return self._direct("intensity_area_um2", wavelength_um)
+
+    def power_area_um2(self, wavelength_um):
+        """Area in power form, (int Sz)^2 / int Sz^2, um2."""
+        return self._direct("power_area_um2", wavelength_um)
+
+    def gamma_per_w_m(self, wavelength_um):
+        """Nonlinear coefficient, 1/(W m); NaN where the core has no n2."""
+        return self._direct("gamma_per_w_m", wavelength_um)
+
+    def te_fraction(self, wavelength_um):
+        """int |Ex|^2 over int (|Ex|^2 + |Ey|^2)."""
+        return self._direct("te_fraction", wavelength_um)
+
+    def core_power_fraction(self, wavelength_um):
+        """Share of the power that flows in the core."""
+        return self._direct("core_power_fraction", wavelength_um)
+
+    def zero_dispersion_um(self) -> np.ndarray:
+        """Wavelengths in the band where beta2 vanishes, rising; empty where it does not."""
+        omega = self.band.frequency(np.linspace(1.0, -1.0, 2001))
+        beta2 = self.beta_rad_per_um(omega, 2)
+        roots = []
+        for i in np.flatnonzero(np.sign(beta2[:-1]) * np.sign(beta2[1:]) < 0):
+            roots.append(self._beta2_root(omega[i + 1], omega[i]))
+        return um_from_omega(np.array(roots))
+
+    def _beta2_root(self, low: float, high: float) -> float:
+        from scipy.optimize import brentq
+
+        return brentq(lambda w: float(self.beta_rad_per_um(w, 2)), low, high, xtol=1e-10)
+
+    def _zero_dispersion_bar(self) -> np.ndarray:
+        """Error bars of the zero-dispersion wavelengths: that of beta2 over its slope."""
+        zeros = self.zero_dispersion_um()
+        omega = omega_from_um(zeros)
+        slope = PER_UM_TO_PER_KM * self.beta_rad_per_um(omega, 3) * omega / zeros
+        return np.abs(self._bar("beta2_ps2_per_km", zeros) / slope)
+
+    def _bar(self, key: str, wavelength_um):
+        """Error bar of a method at wavelengths in um."""
+        value = np.asarray(getattr(self, key)(wavelength_um))
+        bar = np.zeros(value.shape)
+        for _, weight, other in self.alternates:
+            bar = bar + weight * np.abs(getattr(other, key)(wavelength_um) - value)
+        return _like(value, bar)
+
+    def _omega(self, wavelength_um) -> np.ndarray:
+        wavelength = np.asarray(wavelength_um, dtype=float)
+        short, long = self.band_um
+        slack = 1e-9
+        ok = (wavelength >= short * (1 - slack)) & (wavelength <= long * (1 + slack))
+        if not np.all(ok):
+            wrong = np.atleast_1d(wavelength)[~np.atleast_1d(ok)][0]
+            raise OutOfRange(
+                f"wavelength {wrong:g} um lies outside the solved band {short:g} to {long:g} um; "
+                "solve the curve over a wider band"
+            )
+        return omega_from_um(wavelength)
+
+    def _beta(self, wavelength_um, derivative: int):
+        omega = self._omega(wavelength_um)
+        clipped = np.clip(omega, self.band.low, self.band.high)
+        return _like(omega, self.beta_rad_per_um(clipped, derivative))
+
+    def _direct(self, key: str, wavelength_um):
+        omega = self._omega(wavelength_um)
+        return _like(omega, self.functions[key](omega))
+
+    def variables(self) -> list[Variable]:
+        """The curve as a table over the band, with error bars."""
+        short, long = self.band_um
+        wavelength = np.linspace(short, long, TABLE_POINTS)
+        dims = ("wavelength_um",)
+        out = [Variable("wavelength_um", wavelength, dims, "um", "vacuum wavelength", None)]
+        for key, (long_name, unit) in COLUMNS.items():
+            values = getattr(self, key)(wavelength)
+            out.append(Variable(key, values, dims, unit, long_name, self._bar(key, wavelength)))
+        return out
+
+
+def _like(template, value):
+    """Scalars in, scalars out."""
+    return float(value) if np.ndim(template) == 0 else np.asarray(value)

@@ -1,0 +1,238 @@
+"""Candidates for guided modes: found on a coarse grid, recognised on any other.
+
+A mode is known by its seed: an estimate of its index, its parity, and what its
+transverse field looks like on the blocks of the unit grid. The cut-off is the highest
+index with which a field can run away through an open side of the box; beside a slab that
+is a slab mode's.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, replace
+
+import numpy as np
+
+from materials.common.constants import C_UM_PER_PS
+from materials.common.errors import NotConverged, TooCloseToCutoff
+from modesolve.eigen import Factorisation, Pencil, RawMode, nearest_modes
+from modesolve.grid import Margins
+from modesolve.layout import Layout, decay_constant
+from modesolve.operators import Operators, Walls
+
+__all__ = [
+    "Seed",
+    "cutoff_index",
+    "find_seeds",
+    "make_seed",
+    "margins_for",
+    "near_cutoff",
+    "recognise",
+    "side_backgrounds",
+]
+
+#: Margins in decay lengths of the field, and the widest allowed, um.
+MARGIN_DECAYS = 11.0
+WIDEST_MARGIN_UM = 50.0
+
+#: Modes sought near the shift and Krylov basis, widened until the mode is recognised. The
+#: shift is so close that the first search takes nine solves.
+SEARCHES = ((1, 8), (4, 20), (16, 40))
+
+#: A shift lies this factor above the eigenvalue expected.
+ABOVE = 1.0 + 1e-4
+
+#: Least overlap of a mode with itself on another grid or at another frequency.
+LEAST_OVERLAP = 0.7
+
+
+#: Share of the index step below the cut-off, and above it, within which a coarse grid can
+#: not tell a guided mode from a mode of the numerical box.
+COARSE_SLACK, NEAR_CUTOFF = 0.03, 0.08
+
+#: Grids of the slab problem beside a core; their Richardson value is good to about 1e-5.
+STACK_GRIDS = (4, 8)
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Seed:
+    """A mode as first seen: enough to find it again on any grid.
+
+    Attributes
+    ----------
+    n_eff : float
+        Estimate of the effective index.
+    walls : Walls
+        The parity it belongs to.
+    fingerprint : ndarray
+        Transverse field on the blocks of the unit grid, normalised.
+    te_fraction : float
+    """
+
+    n_eff: float
+    walls: Walls
+    fingerprint: np.ndarray
+    te_fraction: float
+
+
+def fingerprint(operators: Operators, right: np.ndarray, refinement: int) -> np.ndarray:
+    """Transverse field averaged over the blocks of the unit grid, unit norm.
+
+    Grids of one layout have the same logical segments, so a block of m x m cells of the
+    grid m covers the same logical square on each of them; a mode is recognised by it.
+    """
+    topology, metric = operators.topology, operators.grid.metric
+    u_x, u_y, v_x, v_y = metric.inverse
+    e_u, e_v = topology.to_quarters(right)
+    area = np.sqrt(np.abs(metric.det))
+    parts = []
+    n_u, n_v = topology.shape
+    rows = _blocks(n_u, refinement)
+    columns = _blocks(n_v, refinement)
+    for component in (u_x * e_u + v_x * e_v, u_y * e_u + v_y * e_v):
+        cells = (component * area).sum(axis=(2, 3))
+        parts.append(np.add.reduceat(np.add.reduceat(cells, rows, axis=0), columns, axis=1))
+    out = np.stack(parts)
+    return out / np.linalg.norm(out)
+
+
+def _blocks(cells: int, refinement: int) -> np.ndarray:
+    return np.arange(0, cells, refinement) if cells >= refinement else np.array([0])
+
+
+def overlap(a: np.ndarray, b: np.ndarray) -> float:
+    """Overlap of two fingerprints, 0 to 1."""
+    return float(abs(np.vdot(a, b)))
+
+
+def make_seed(
+    operators: Operators, mode: RawMode, k0: float, walls: Walls, refinement: int
+) -> Seed:
+    """The seed of a mode on a grid of the given refinement."""
+    look = fingerprint(operators, mode.right, refinement)
+    share = float(np.sum(np.abs(look[0]) ** 2))
+    n_eff = float(np.sqrt(max(np.real(mode.eigenvalue), 0.0)) / k0)
+    return Seed(n_eff, walls, look, share)
+
+
+def recognise(
+    pencil: Pencil, shift: float, seed: Seed, refinement: int
+) -> tuple[RawMode, Factorisation, list[RawMode]]:
+    """The mode of the pencil that looks like the seed, its factorisation, the others."""
+    factorisation = pencil.factorise(shift)
+    for count, basis in SEARCHES:
+        found = nearest_modes(pencil, factorisation, shift, count, basis=basis)
+        marks = [
+            overlap(fingerprint(pencil.operators, mode.right, refinement), seed.fingerprint)
+            for mode in found
+        ]
+        best = int(np.argmax(marks)) if marks else 0
+        if marks and marks[best] >= LEAST_OVERLAP:
+            mode = found.pop(best)
+            return mode, factorisation, found
+    raise NotConverged(
+        f"the mode near index {seed.n_eff:.5f} could not be recognised on the grid "
+        f"m = {refinement} (best overlap {max(marks, default=0.0):.2f}); "
+        "two modes may be crossing here: move the wavelength or the width slightly"
+    )
+
+
+def cutoff_index(layout: Layout, omega: float) -> float:
+    """Index below which a mode is no longer guided: the highest of every open side.
+
+    Beside the core this is a slab mode's index where the stack there guides one.
+    """
+    return max(side_backgrounds(layout, omega).values(), default=0.0)
+
+
+def side_backgrounds(layout: Layout, omega: float) -> dict[str, float]:
+    """Index of the background that the field decays towards on each open side."""
+    out = {}
+    for side in layout.open_sides():
+        index = layout.side_background(side, omega)
+        if side in ("left", "right"):
+            index = max(index, _stack_index(layout, 0 if side == "left" else -1, omega, index))
+        out[side] = index
+    return out
+
+
+def _stack_index(layout: Layout, column: int, omega: float, background: float) -> float:
+    """Index of the best guided slab mode of a column, or the background's."""
+    n = layout.indices(omega)
+    if max(n[i] for i in layout.fill[column]) <= background:
+        return background
+    stack = layout.column(column)
+    best = background
+    for walls in (Walls(), Walls(left="magnetic", right="magnetic")):
+        polarised = replace(stack, walls=walls)
+        coarse, fine = (
+            find_seeds(polarised, omega, 1, background, refinement) for refinement in STACK_GRIDS
+        )
+        if coarse and fine:
+            step = (STACK_GRIDS[1] / STACK_GRIDS[0]) ** 2 - 1.0
+            best = max(best, fine[0].n_eff + (fine[0].n_eff - coarse[0].n_eff) / step)
+    return best
+
+
+def near_cutoff(layout: Layout, omega: float, n_eff: float, cutoff: float) -> bool:
+    """Whether a coarse index lies so near the cut-off that it may be a mode of the box."""
+    return n_eff < cutoff + NEAR_CUTOFF * (float(layout.indices(omega).max()) - cutoff)
+
+
+def margins_for(backgrounds: dict[str, float], omega: float, n_eff: float) -> Margins:
+    """Margins wide enough for the field of index ``n_eff`` to die away.
+
+    Raises
+    ------
+    TooCloseToCutoff
+        When a margin would exceed ``WIDEST_MARGIN_UM``.
+    """
+    out = {}
+    for side, background in backgrounds.items():
+        gamma = decay_constant(omega, n_eff, background)
+        if gamma * WIDEST_MARGIN_UM < MARGIN_DECAYS:
+            raise TooCloseToCutoff(
+                f"index {n_eff:.6f} is too close to cut-off: to the {side} the field decays "
+                f"towards index {background:.6f} over more than "
+                f"{WIDEST_MARGIN_UM / MARGIN_DECAYS:.1f} um; widen or thicken the core, "
+                "or use a shorter wavelength"
+            )
+        out[side] = MARGIN_DECAYS / gamma
+    return Margins(**out)
+
+
+def find_seeds(
+    layout: Layout,
+    omega: float,
+    count: int,
+    cutoff: float,
+    refinement: int = 3,
+) -> list[Seed]:
+    """Candidates for guided modes on one coarse grid, highest index first.
+
+    Modes of the numerical box lie below the cut-off; those within the coarse grid's
+    error below it are kept for the ladder to decide.
+    """
+    indices = layout.indices(omega)
+    top = float(indices.max())
+    if top <= cutoff:
+        return []
+    k0 = omega / C_UM_PER_PS
+    slack = COARSE_SLACK * (top - cutoff)
+    reach = cutoff + max(slack, 2e-3)
+    margins = Margins(
+        **{
+            side: min(MARGIN_DECAYS / decay_constant(omega, reach, cutoff), WIDEST_MARGIN_UM)
+            for side in layout.open_sides()
+        }
+    )
+    grid = layout.grid(margins, refinement)
+    permittivity = layout.permittivity(omega, 0)[:, 0]
+    shift = (k0 * top) ** 2
+    seeds = []
+    for walls in layout.parities():
+        operators = layout.operators(grid, walls)
+        pencil = Pencil(operators, k0, permittivity)
+        found = nearest_modes(pencil, pencil.factorise(shift), shift, count + 3)
+        seeds += [make_seed(operators, mode, k0, walls, refinement) for mode in found]
+    seeds.sort(key=lambda s: -s.n_eff)
+    return [s for s in seeds if s.n_eff > cutoff - slack]
