@@ -34,6 +34,7 @@ from materials.common.results import (
 )
 from modesolve.band import Band, BandFunction, leja_nodes
 from modesolve.cross_section import CrossSection
+from modesolve.curve import CurveReport, DispersionCurve
 from modesolve.grid import Margins
 from modesolve.layout import Layout
 from modesolve.mode import (

@@ -9,8 +9,9 @@ from __future__ import annotations
 import os
 import time
 from collections.abc import Callable
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from pathlib import Path
+from typing import TypeVar
 
 import numpy as np
 
@@ -20,7 +21,8 @@ from materials.common.files import write_text
 from materials.common.folders import whole_folder
 from materials.common.results import Provenance, make_provenance
 from modesolve.cross_section import CrossSection
-from modesolve.dispersion import DispersionCurve, dispersion
+from modesolve.curve import DispersionCurve
+from modesolve.dispersion import dispersion
 from modesolve.mode import Mode, solve_modes
 from phasematch.channel import Channel
 from phasematch.channel_results import ChannelMap, ConversionBand, PairFlux
@@ -37,6 +39,16 @@ from phasematch.tables import (
 )
 
 Progress = Callable[[str], None]
+ResultType = TypeVar(
+    "ResultType",
+    ChannelMap,
+    ConversionBand,
+    PairFlux,
+    PairTable,
+    DetuningMap,
+    RingDispersion,
+    PairRates,
+)
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -133,9 +145,9 @@ def channel_results(design: Design, curve: DispersionCurve) -> ChannelResults:
     pumps = np.linspace(*table.map_pump_um, table.map_points)
     signals = np.linspace(*table.map_signal_um, table.map_points)
     return ChannelResults(
-        map=channel.map(pumps, signals, table.pump_w),
-        band=channel.conversion_band(table.pump_um, table.pump_w),
-        flux=channel.pair_flux(table.pump_um, table.pump_w),
+        map=_of(design, channel.map(pumps, signals, table.pump_w)),
+        band=_of(design, channel.conversion_band(table.pump_um, table.pump_w)),
+        flux=_of(design, channel.pair_flux(table.pump_um, table.pump_w)),
     )
 
 
@@ -150,13 +162,20 @@ def ring_results(design: Design, curve: DispersionCurve) -> RingResults:
         q_intrinsic=table.q_intrinsic,
         q_coupling=table.q_coupling,
     )
-    powered = table.pump_w > 0
+    rates = None
+    if table.pump_w > 0:
+        rates = _of(design, ring.spontaneous(table.pump_um, table.pump_w, table.pairs))
     return RingResults(
-        pairs=ring.pairs(table.pump_um, table.pairs),
-        detuning=ring.detuning_map(table.map_pump_um, table.pairs),
-        dispersion=ring.dispersion_coefficients(table.pump_um),
-        rates=ring.spontaneous(table.pump_um, table.pump_w, table.pairs) if powered else None,
+        pairs=_of(design, ring.pairs(table.pump_um, table.pairs)),
+        detuning=_of(design, ring.detuning_map(table.map_pump_um, table.pairs)),
+        dispersion=_of(design, ring.dispersion_coefficients(table.pump_um)),
+        rates=rates,
     )
+
+
+def _of(design: Design, result: ResultType) -> ResultType:
+    """The result with the whole design among its inputs, so that its file stands alone."""
+    return replace(result, inputs={**result.inputs, "design": design.as_dict()})
 
 
 def missing_table(design: Design, name: str) -> DesignFileError:

@@ -19,7 +19,7 @@ from materials.common.results import (
     quantity,
 )
 from modesolve.cross_section import CrossSection
-from modesolve.dispersion import DispersionCurve
+from modesolve.curve import DispersionCurve
 from modesolve.mode import Mode, solve_modes
 from phasematch.mixing import error_bar
 
