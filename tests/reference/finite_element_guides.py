@@ -10,7 +10,7 @@ from __future__ import annotations
 import itertools
 import math
 from collections.abc import Callable, Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.polynomial import Chebyshev
@@ -68,6 +68,16 @@ class Resolution:
     widest: float = 0.8
 
 
+#: The cheapest meshes found by a scan of some hundred that bring TE0 of a core in 1.444 at 1.55 um
+#: to the accuracy named, half the section modelled: 2.0, 1.6 x 0.8 um, to 1e-7 (3033 unknowns),
+#: and 3.48, 0.5 x 0.22 um, to 5e-7 (3033). They profit from errors of opposite sign; meshes that
+#: need no such luck have 4800 and 8800 unknowns and take half as long again and twice as long.
+CHEAPEST = {
+    "nitride": Resolution(4, 1, 0.12, 0.3, 2.0, 1.8, (1.8, 1.8), 2.0),
+    "silicon": Resolution(4, 1, 0.10, 0.15, 3.0, 1.7, (1.7, 1.7), 2.0),
+}
+
+
 def _between(a: float, b: float, low: bool, high: bool, res: Resolution) -> np.ndarray:
     """Grid lines from a to b, refined towards the ends that are ``low``, ``high`` singular."""
     span = (b - a) / 2 if low and high else b - a
@@ -106,7 +116,7 @@ def grid(guide: Guide, res: Resolution) -> tuple[np.ndarray, np.ndarray]:
 def weight_series(index: Index, k0: float, order: int) -> np.ndarray:
     """Taylor coefficients of k0^2 n^2 in k0, shape (order + 1,).
 
-    A medium's are those of its Chebyshev interpolant over +-15 % of k0 (21 nodes), so that
+    A medium's are those of its Chebyshev interpolant over +-12 % of k0 (19 nodes), so that
     they owe nothing to the series of the package under test.
     """
     if not callable(index):
@@ -114,7 +124,7 @@ def weight_series(index: Index, k0: float, order: int) -> np.ndarray:
         series[:3] = index**2 * np.array([k0**2, 2 * k0, 1.0])
         return series[: order + 1]
     square = np.vectorize(lambda k: (k * index(2 * math.pi / k)) ** 2)
-    poly = Chebyshev.interpolate(square, 20, domain=[0.85 * k0, 1.15 * k0])
+    poly = Chebyshev.interpolate(square, 18, domain=[0.88 * k0, 1.12 * k0])
     terms = [poly(k0)] + [poly.deriv(j)(k0) / math.factorial(j) for j in range(1, order + 1)]
     return np.array(terms)
 
@@ -223,6 +233,22 @@ def pencil_of(guide: Guide, polarisation: str, res: Resolution) -> tuple[Pencil,
     return pencil, names[np.repeat(row, len(column)), np.tile(column, len(row))]
 
 
+def _find(guide, media, k0, polarisation, res, guess, rtol=1e-12):
+    """(lambda, vector, share of Ex, pencil, regions) of TE0 or TM0, by Arnoldi iteration."""
+    pencil, region = pencil_of(guide, polarisation, res)
+    square = {name: weight_series(media[name], k0, 0)[0] for name in np.unique(region)}
+    weight = np.array([square[name] for name in region])
+    top = (guess * k0) ** 2 if guess else weight.max()
+    lams, vecs = pencil.eigenpairs(weight, top, 2 if guess else 5, rtol)
+    for lam, vec in zip(lams, vecs.T, strict=True):
+        f = pencil.fields(vec, 2 * res.order + 1)
+        parts = [(f[c] ** 2 * f["area"]).sum() for c in ("ex", "ey")]
+        fraction = parts[0] / sum(parts)
+        if lam > 0 and (fraction >= 0.5) == (polarisation == "TE"):
+            return lam, vec, float(fraction), pencil, region
+    raise RuntimeError("no mode of this polarisation among those found")
+
+
 def lowest_mode(
     guide: Guide,
     media: Mapping[str, Index],
@@ -242,19 +268,9 @@ def lowest_mode(
     guess : an index close to n_eff from above, to start the search from
     """
     k0 = 2 * math.pi / wavelength_um
-    pencil, region = pencil_of(guide, polarisation, res)
+    lam, vec, fraction, pencil, region = _find(guide, media, k0, polarisation, res, guess)
     series = {name: weight_series(media[name], k0, derivatives) for name in np.unique(region)}
     weights = np.array([series[name] for name in region]).T
-    top = guess or math.sqrt(weights[0].max()) / k0
-    lams, vecs = pencil.eigenpairs(weights[0], (top * k0) ** 2, 2 if guess else 6)
-    for lam, vec in zip(lams, vecs.T, strict=True):
-        f = pencil.fields(vec, 2 * res.order + 1)
-        parts = [(f[c] ** 2 * f["area"]).sum() for c in ("ex", "ey")]
-        fraction = parts[0] / sum(parts)
-        if lam > 0 and (fraction >= 0.5) == (polarisation == "TE"):
-            break
-    else:
-        raise RuntimeError("no mode of this polarisation among those found")
     lam_series, mode, residual = eigenvalue_series(pencil, weights, lam, vec, derivatives)
     beta = _beta_derivatives(lam_series)
     index = np.sqrt(weights[0]) / k0
@@ -266,9 +282,31 @@ def lowest_mode(
         index,
         region,
         residual,
-        float(fraction),
+        fraction,
         4 if guide.mirror_y else 2,
     )
+
+
+def effective_index(
+    guide: Guide,
+    media: Mapping[str, Index],
+    wavelength_um: float,
+    polarisation: str,
+    res: Resolution,
+) -> tuple[float, Pencil]:
+    """Index of TE0 or TM0 alone, as cheaply as this method gives it; and the mesh's pencil.
+
+    A coarse mesh of order 2 finds the mode; one factorisation of the fine one with the shift
+    put there, and a few passes of inverse iteration, give its index.
+    """
+    k0 = 2 * math.pi / wavelength_um
+    coarse = replace(res, order=2, layers=1, ratio=0.2)
+    near = _find(guide, media, k0, polarisation, coarse, None, rtol=1e-3)[0]
+    pencil, region = pencil_of(guide, polarisation, res)
+    square = {name: weight_series(media[name], k0, 0)[0] for name in np.unique(region)}
+    weight = np.array([square[name] for name in region])
+    lam, _ = pencil.nearest(weight, near)
+    return math.sqrt(lam) / k0, pencil
 
 
 def areas(mode: GuidedMode, n2_um2_per_w: Mapping[str, float] | None = None) -> dict[str, float]:

@@ -32,17 +32,23 @@ J. C. Nedelec, Numer. Math. 35, 315 (1980).
 
 from __future__ import annotations
 
-from dataclasses import dataclass, field
+import logging
+from dataclasses import dataclass
+from functools import cache
 
 import numpy as np
 import scipy.sparse as sp
 import scipy.sparse.linalg as spla
 from numpy.polynomial.legendre import Legendre
 from skfem import CellBasis, ElementQuadP, MeshQuad
+from skfem.assembly import Dofs
 from skfem.element import ElementHcurl
 from skfem.refdom import RefQuad
 
 ELECTRIC, MAGNETIC = "electric", "magnetic"
+
+# scikit-fem logs, at every use, that order 2 has a faster special element
+logging.getLogger("skfem.element.element_quad.element_quadp").setLevel(logging.ERROR)
 
 
 class ElementQuadEdge(ElementHcurl):
@@ -92,6 +98,7 @@ def tensor_mesh(x: np.ndarray, y: np.ndarray) -> MeshQuad:
     return MeshQuad(points, np.vstack([corner, corner + 1, corner + nx + 2, corner + nx + 1]))
 
 
+@cache
 def _reference_matrices(p: int) -> dict[str, np.ndarray]:
     """Matrices of the forms on the unit square, edge and nodal functions of order ``p``."""
     cell = MeshQuad()
@@ -120,10 +127,6 @@ class Factor:
     coupling: np.ndarray
     spread: np.ndarray
     lu: spla.SuperLU
-    nonzeros: int = field(init=False)
-
-    def __post_init__(self):
-        self.nonzeros = int(self.lu.L.nnz + self.lu.U.nnz)
 
     def solve(self, b: np.ndarray) -> np.ndarray:
         """(K - sigma N)^-1 b."""
@@ -166,16 +169,16 @@ class Pencil:
 
     def _number(self, walls):
         """Unknowns of every element, split in inner and outer; those on electric walls fixed."""
-        disabled = {"intorder": 1, "disable_doflocs": True}
-        edge = CellBasis(self.mesh, ElementQuadEdge(self.order), **disabled)
-        node = CellBasis(self.mesh, ElementQuadP(self.order), **disabled)
+        edge = Dofs(self.mesh, ElementQuadEdge(self.order))
+        node = Dofs(self.mesh, ElementQuadP(self.order))
         self.n_edge = edge.N
         self.size = edge.N + node.N
         self.edge_dofs = edge.element_dofs.T
         self.node_dofs = node.element_dofs.T + edge.N
         cut = 4 * self.order
-        self.local_outer = np.r_[0:cut, edge.Nbfun : edge.Nbfun + cut]
-        self.local_inner = np.r_[cut : edge.Nbfun, edge.Nbfun + cut : edge.Nbfun + node.Nbfun]
+        ne, nn = len(edge.element_dofs), len(node.element_dofs)
+        self.local_outer = np.r_[0:cut, ne : ne + cut]
+        self.local_inner = np.r_[cut:ne, ne + cut : ne + nn]
         both = np.hstack([self.edge_dofs, self.node_dofs])
         self.outer, self.inner = both[:, self.local_outer], both[:, self.local_inner]
         # logical position (twice the line's number) of every facet and vertex
@@ -285,12 +288,11 @@ class Pencil:
         inverse = np.linalg.inv(local[:, i[:, None], i])
         spread = np.matmul(inverse, coupling)
         schur = local[:, o[:, None], o] - np.matmul(coupling.transpose(0, 2, 1), spread)
-        at = self.position[self.outer]
-        rows = np.broadcast_to(at[:, :, None], schur.shape)
-        cols = np.broadcast_to(at[:, None, :], schur.shape)
-        keep = (rows >= 0) & (cols >= 0)
-        n = len(self.skeleton)
-        matrix = sp.coo_matrix((schur[keep], (rows[keep], cols[keep])), (n, n)).tocsc()
+        at = self.position[self.outer].astype(np.int32)
+        at[at < 0] = n = len(self.skeleton)  # unknowns on walls end in a last row, cut off
+        rows = np.repeat(at, at.shape[1], axis=1).ravel()
+        cols = np.tile(at, at.shape[1]).ravel()
+        matrix = sp.coo_matrix((schur.ravel(), (rows, cols)), (n + 1, n + 1)).tocsc()[:n, :n]
         lu = spla.splu(
             matrix,
             permc_spec="NATURAL",
@@ -299,14 +301,36 @@ class Pencil:
         )
         return Factor(self, sigma, inverse, coupling, spread, lu)
 
-    def eigenpairs(self, weight, sigma: float, count: int) -> tuple[np.ndarray, np.ndarray]:
+    def nearest(self, weight, sigma: float, start=None, rtol: float = 1e-11):
+        """The eigenvalue nearest to ``sigma`` and its vector, by inverse iteration.
+
+        For a shift that is already close: each pass divides the vector's error by the distance
+        to the next eigenvalue over that to this one, the Rayleigh quotient's by its square.
+        """
+        factor = self.factorise(weight, sigma)
+        x = np.where(self.free, np.cos(np.arange(self.size)), 0.0) if start is None else start
+        lam, n_x = np.inf, self.apply_n(weight, x)
+        for _ in range(40):
+            y = factor.solve(n_x)
+            n_y = self.apply_n(weight, y)
+            # (K - sigma N) y = N x, so the quotient needs no product with K
+            old, lam = lam, sigma + (y @ n_x) / (y @ n_y)
+            scale = np.sqrt(abs(y @ n_y))
+            x, n_x = y / scale, n_y / scale
+            if abs(lam - old) <= rtol * abs(lam):
+                return lam, x
+        raise RuntimeError(f"inverse iteration has not settled near {sigma}")
+
+    def eigenpairs(
+        self, weight, sigma: float, count: int, rtol: float = 1e-12
+    ) -> tuple[np.ndarray, np.ndarray]:
         """The ``count`` eigenvalues beta^2 nearest to ``sigma``, largest first, and vectors."""
         factor = self.factorise(weight, sigma)
         op = spla.LinearOperator(
             (self.size, self.size), lambda v: factor.solve(self.apply_n(weight, v)), dtype=float
         )
         start = np.where(self.free, np.cos(np.arange(self.size)), 0.0)
-        mu, vec = spla.eigs(op, count, v0=start, which="LM", tol=1e-12, ncv=max(12, 3 * count))
+        mu, vec = spla.eigs(op, count, v0=start, which="LM", tol=rtol, ncv=max(12, 3 * count))
         lam = sigma + 1.0 / mu
         good = np.argsort(-lam.real)
         return lam.real[good], vec.real[:, good]

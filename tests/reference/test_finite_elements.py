@@ -3,16 +3,20 @@
 from __future__ import annotations
 
 import math
+import tomllib
+from pathlib import Path
 
 import numpy as np
 import pytest
 import scipy.sparse as sp
 import scipy.sparse.linalg as spla
 from reference.finite_element_guides import (
+    CHEAPEST,
     GuidedMode,
     Resolution,
     areas,
     channel,
+    effective_index,
     eigenvalue_series,
     grid,
     lowest_mode,
@@ -238,3 +242,65 @@ def test_against_library_triangles():
     # both of order 3 on the same lines: each is within 2.5e-5 of the limit
     assert other == pytest.approx(2.44964706, abs=2.5e-5)
     assert ours == pytest.approx(other, abs=2.5e-5)
+
+
+CONVERGED = tomllib.loads(Path(__file__).with_name("channel_values.toml").read_text())
+
+
+@pytest.mark.source(
+    "independent high-order full-vector solution; first row also Bienstman et al., "
+    "Opt. Quantum Electron. 38, 731 (2006), eight methods (from memory, high confidence)",
+    "n_eff, n_g, beta2, areas",
+    "one of the last printed",
+)
+@pytest.mark.parametrize(
+    ("name", "key", "printed", "last"),
+    [
+        ("silicon-wire-eight-methods-TE", "n_eff", 2.412372, 1e-6),
+        ("silicon-wire-eight-methods-TE", "n_group", 4.24431, 1e-5),
+        ("rib-low-contrast-TE", "n_eff", 3.3887005, 3e-7),
+        ("rib-low-contrast-TM", "n_eff", 3.3878673, 3e-7),
+        ("buried-silicon-constant-TE", "n_eff", 2.44964706, 3e-8),
+        ("buried-silicon-constant-TE", "n_group", 4.0584107, 1e-7),
+        ("buried-silicon-constant-TE", "power_area_um2", 0.112681, 1e-6),
+        ("buried-silicon-constant-TE", "intensity_area_um2", 0.18939, 1e-5),
+        ("buried-silicon-constant-TM", "n_eff", 1.7726375, 3e-7),
+        ("buried-silicon-constant-TM", "n_group", 3.661288, 1e-6),
+        ("buried-silicon-constant-TM", "power_area_um2", 0.29404, 1e-5),
+        ("buried-nitride-constant-TE", "n_eff", 1.8381769, 1e-7),
+        ("buried-nitride-constant-TE", "n_group", 2.0812844, 1e-6),
+        ("buried-nitride-constant-TE", "power_area_um2", 1.01917, 1e-5),
+        ("buried-nitride-constant-TE", "intensity_area_um2", 1.10847, 1e-5),
+        ("buried-nitride-constant-TM", "n_eff", 1.8068046, 1e-7),
+        ("buried-nitride-constant-TM", "n_group", 2.1082327, 1.1e-6),
+        ("buried-nitride-constant-TM", "power_area_um2", 1.03507, 1e-5),
+        ("nitride-1600x800-in-silica-TE", "n_eff", 1.83454380, 5e-8),
+        ("nitride-1600x800-in-silica-TE", "n_group", 2.121081, 1e-6),
+        ("nitride-1600x800-in-silica-TE", "beta2_ps2_per_km", -137.847, 3e-3),
+        ("silicon-500x300-in-silica-TE", "n_eff", 2.6739871, 1e-7),
+        ("silicon-500x300-in-silica-TE", "n_group", 4.203917, 1e-6),
+        ("silicon-500x300-in-silica-TE", "beta2_ps2_per_km", -1525.84, 1e-2),
+    ],
+)
+def test_converged_values_agree_with_others(name, key, printed, last):
+    entry = CONVERGED[name][key]
+    assert abs(entry["value"] - printed) <= last
+    assert entry["uncertainty"] < last / 10
+
+
+@pytest.mark.source("definitions of Goell, Bell Syst. Tech. J. 48, 2133 (1969)", "P^2", "7")
+def test_converged_square_guide():
+    n_eff = CONVERGED["square-goell-TE"]["n_eff"]["value"]
+    assert (n_eff**2 - 1) / 1.25 == pytest.approx(0.6719374, abs=1e-7)
+
+
+@pytest.mark.source("channel_values.toml", "core .50 x .22 and 1.6 x .8 um", "n_eff 4e-10")
+@pytest.mark.parametrize(
+    ("which", "size", "core", "reached"),
+    [("nitride", (1.6, 0.8), 2.0, 1e-7), ("silicon", (0.5, 0.22), 3.48, 5e-7)],
+)
+def test_cheapest_meshes_reach_what_they_claim(which, size, core, reached):
+    media = {"core": core, "substrate": 1.444, "cladding": 1.444}
+    n_eff, _ = effective_index(channel(*size), media, 1.55, "TE", CHEAPEST[which])
+    reference = CONVERGED[f"buried-{which}-constant-TE"]["n_eff"]["value"]
+    assert abs(n_eff - reference) < reached
