@@ -176,6 +176,6 @@ def _refused_section(values: Values) -> Iterator[str]:
     if not {"core", "cladding", "substrate", "width_um", "height_um"} <= set(section):
         return
     try:
-        CrossSection(**section)
+        CrossSection(**section).layout()
     except InputError as exc:
         yield f"cross_section: {exc}"

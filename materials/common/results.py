@@ -151,10 +151,12 @@ class Provenance:
     host: str = dataclasses.field(default="", compare=False)
 
     def as_dict(self) -> dict[str, Any]:
-        """Everything as plain values, ``details`` as a mapping."""
-        out = {f.name: getattr(self, f.name) for f in dataclasses.fields(self)}
+        """Everything as plain values; what differs from run to run stands under "made"."""
+        out = {f.name: getattr(self, f.name) for f in dataclasses.fields(self) if f.compare}
         out["details"] = dict(self.details)
-        return {k: v for k, v in plain(out).items() if v not in ("", [], {}) and v == v}
+        made = {"at": self.made_at, "seconds": self.seconds, "host": self.host}
+        out["made"] = {k: v for k, v in made.items() if v not in ("",) and v == v}
+        return {k: v for k, v in plain(out).items() if v not in ("", [], {})}
 
 
 def make_provenance(

@@ -213,6 +213,36 @@ def test_materials(idlermap):
     assert code == cli_codes().USAGE and "SiO2-Malitson1965" in err
 
 
+def test_files_of_single_verbs_carry_the_whole_design(idlermap, here):
+    assert idlermap("ring", "design.toml", "-o", "pairs.csv")[0] == 0
+    header = (here / "pairs.csv").read_text()
+    for line in (
+        '# input design.cross_section.core = "Si3N4-Luke2015"',
+        "# input design.ring.q_intrinsic = 2000000.0",
+        "# input radius_um = 100.0",
+        "# provenance grid = ",
+        "# provenance made.at = ",
+    ):
+        assert line in header
+
+
+def test_extrapolation_is_marked_on_results(idlermap, here):
+    film = 'cross_section.core="Si3N4-Philipp1973"'  # measured up to 1.24 um
+    code, _, err = idlermap("modes", "design.toml", "--set", film)
+    assert code == 2 and "band.extrapolate = true" in err
+    wider = ["--set", film, "--set", "band.extrapolate=true"]
+    for verb in ("modes", "dispersion", "channel", "ring"):
+        code, _, err = idlermap(verb, "design.toml", "-o", f"{verb}.csv", *wider)
+        assert code == 0
+        note = "Si3N4-Philipp1973 may be extrapolated outside"
+        assert note in err and note in (here / f"{verb}.csv").read_text(), verb
+
+
+def test_shell_completion(run_idlermap):
+    done = run_idlermap(environment={"_IDLERMAP_COMPLETE": "bash_source"})
+    assert done.returncode == 0 and "_idlermap_completion" in done.stdout
+
+
 def test_version_and_help(idlermap):
     code, out, _ = idlermap("--version")
     assert code == 0 and out.startswith("idlermap, version ")

@@ -1,5 +1,7 @@
 """Every shipped design runs as the README says, and gives the numbers it should."""
 
+import re
+import textwrap
 from pathlib import Path
 
 import pandas
@@ -42,6 +44,34 @@ def test_example(run_idlermap, tmp_path, name):
         assert 0 < bar < tolerance * abs(expected)
     for figure in ("mode_field", "dispersion", "channel_map"):
         assert (tmp_path / "out" / f"{figure}.png").stat().st_size > 10_000
+
+
+README = EXAMPLES.parent / "README.md"
+
+
+def test_readme_lists_what_a_run_writes(run_idlermap, tmp_path):
+    done = run_idlermap("run", str(EXAMPLES / "nitride_ring.toml"), "-o", "out")
+    assert done.returncode == 0, done.stderr
+    listed, stem = set(), ""
+    for row in re.findall(r"^\| (`.+?) \|", README.read_text(), re.MULTILINE):
+        for name in re.findall(r"`([^`]+)`", row):
+            if name.startswith("."):  # the same name with another suffix
+                listed.add(stem + name)
+            else:
+                listed.add(name)
+                stem = name.split(".")[0]
+    assert {path.name for path in (tmp_path / "out").iterdir()} == listed
+
+
+def test_readme_script_runs(capsys):
+    text = README.read_text()
+    block = text.split("The same from Python:")[1].split("Units are")[0]
+    names = {}
+    exec(textwrap.dedent(block), names)
+    assert "n_eff" in capsys.readouterr().out
+    assert names["pairs"].aligned.sum() == 13
+    for figure in re.findall(r"\((examples/figures/[^)]+)\)", text):
+        assert (README.parent / figure).is_file()
 
 
 @pytest.mark.snapshot
