@@ -33,7 +33,9 @@ from typing import Any
 
 import numpy as np
 
-from materials.common.files import Variable, csv_text, plain, write_csv, write_hdf5
+from materials.common.csv_file import csv_text, write_csv
+from materials.common.files import Variable, plain
+from materials.common.hdf5_file import write_hdf5
 from materials.common.printing import format_number, printed
 
 __all__ = [
@@ -249,7 +251,7 @@ class Result:
         }
 
     def to_csv(self, path: str | os.PathLike[str]) -> None:
-        """Write the result as a table with its units and inputs; see `files.write_csv`."""
+        """Write the result as a table with its units and inputs; see `csv_file`."""
         write_csv(path, self.variables(), **self._about())
 
     def csv_text(self) -> str:
@@ -257,7 +259,7 @@ class Result:
         return csv_text(self.variables(), **self._about())
 
     def to_hdf5(self, path: str | os.PathLike[str]) -> None:
-        """Write the result as HDF5 that netCDF-4 readers open; see `files.write_hdf5`."""
+        """Write the result as HDF5 that netCDF-4 readers open; see `hdf5_file`."""
         write_hdf5(path, self.variables(), **self._about())
 
     def __repr__(self) -> str:

@@ -12,8 +12,10 @@ import pandas
 import pytest
 import xarray
 
+from materials.common.csv_file import write_csv
 from materials.common.errors import InputError, StorageError
-from materials.common.files import Variable, whole_file, write_csv, write_hdf5, write_text
+from materials.common.files import Variable, whole_file, write_text
+from materials.common.hdf5_file import write_hdf5
 from materials.common.results import ErrorBars, Provenance, Result, make_provenance, quantity
 
 
