@@ -85,6 +85,15 @@ class Layout:
         }
         return tuple(side for side, end in ends.items() if end == "open")
 
+    def inner_cells(self, grid: Grid) -> np.ndarray:
+        """Cells that lie between walls, not in an outer segment, shape (n_u, n_v)."""
+        masks = []
+        for axis, segment in ((self.across, grid.segment_u), (self.up, grid.segment_v)):
+            first = 1 if axis.low == "open" else 0
+            last = axis.segment_count - (1 if axis.high == "open" else 0)
+            masks.append((segment >= first) & (segment < last))
+        return masks[0][:, None] & masks[1][None, :]
+
     def corner_media(self) -> int:
         """Most media that meet in one corner; 1 where there is no corner."""
         fill = np.array(self.fill)

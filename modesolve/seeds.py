@@ -46,8 +46,9 @@ LEAST_OVERLAP = 0.7
 
 
 #: Share of the index step below the cut-off, and above it, within which a coarse grid can
-#: not tell a guided mode from a mode of the numerical box.
-COARSE_SLACK, NEAR_CUTOFF = 0.03, 0.08
+#: not tell a guided mode from a mode of the numerical box. Below the cut-off a candidate
+#: must have a share of its field between the walls to be worth a ladder.
+COARSE_SLACK, NEAR_CUTOFF, LEAST_INNER_SHARE = 0.03, 0.08, 0.1
 
 #: Grids of the slab problem beside a core; their Richardson value is good to about 1e-5.
 STACK_GRIDS = (4, 8)
@@ -80,19 +81,31 @@ def fingerprint(operators: Operators, right: np.ndarray, refinement: int) -> np.
     Grids of one layout have the same logical segments, so a block of m x m cells of the
     grid m covers the same logical square on each of them; a mode is recognised by it.
     """
-    topology, metric = operators.topology, operators.grid.metric
-    u_x, u_y, v_x, v_y = metric.inverse
-    e_u, e_v = topology.to_quarters(right)
-    area = np.sqrt(np.abs(metric.det))
+    area = np.sqrt(np.abs(operators.grid.metric.det))
     parts = []
-    n_u, n_v = topology.shape
+    n_u, n_v = operators.topology.shape
     rows = _blocks(n_u, refinement)
     columns = _blocks(n_v, refinement)
-    for component in (u_x * e_u + v_x * e_v, u_y * e_u + v_y * e_v):
+    for component in _transverse(operators, right):
         cells = (component * area).sum(axis=(2, 3))
         parts.append(np.add.reduceat(np.add.reduceat(cells, rows, axis=0), columns, axis=1))
     out = np.stack(parts)
     return out / np.linalg.norm(out)
+
+
+def field_share(operators: Operators, right: np.ndarray, cells: np.ndarray) -> float:
+    """Share of int |E_t|^2 dA in a set of cells."""
+    e_x, e_y = _transverse(operators, right)
+    density = (np.abs(e_x) ** 2 + np.abs(e_y) ** 2) * np.abs(operators.grid.metric.det)
+    density = density.sum(axis=(2, 3))
+    return float(density[cells].sum() / density.sum())
+
+
+def _transverse(operators: Operators, right: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
+    """Ex and Ey in the quarter cells."""
+    u_x, u_y, v_x, v_y = operators.grid.metric.inverse
+    e_u, e_v = operators.topology.to_quarters(right)
+    return u_x * e_u + v_x * e_v, u_y * e_u + v_y * e_v
 
 
 def _blocks(cells: int, refinement: int) -> np.ndarray:
@@ -232,7 +245,10 @@ def find_seeds(
     for walls in layout.parities():
         operators = layout.operators(grid, walls)
         pencil = Pencil(operators, k0, permittivity)
-        found = nearest_modes(pencil, pencil.factorise(shift), shift, count + 3)
-        seeds += [make_seed(operators, mode, k0, walls, refinement) for mode in found]
-    seeds.sort(key=lambda s: -s.n_eff)
-    return [s for s in seeds if s.n_eff > cutoff - slack]
+        inner = layout.inner_cells(grid)
+        for mode in nearest_modes(pencil, pencil.factorise(shift), shift, count + 3):
+            seed = make_seed(operators, mode, k0, walls, refinement)
+            bound = field_share(operators, mode.right, inner) > LEAST_INNER_SHARE
+            if seed.n_eff > (cutoff - slack if bound else cutoff):
+                seeds.append(seed)
+    return sorted(seeds, key=lambda s: -s.n_eff)
