@@ -160,7 +160,9 @@ def _solve_singular(
     pass by |lambda - shift| over the distance from the shift to the nearest other
     eigenvalue that is not a neighbour.
     """
-    norm = float(np.linalg.norm(right))
+    # in the norm of Mn^-1: in the plain one the shortest edges hide what is left elsewhere
+    scale = np.sqrt(np.abs(pencil.mass.diagonal()))
+    norm = float(np.linalg.norm(right / scale))
     z = np.zeros_like(right)
     if norm == 0.0:
         return z, 0.0
@@ -176,7 +178,7 @@ def _solve_singular(
         z = z + step
         defect = right - (pencil.matrix @ z - mode.eigenvalue * (pencil.mass @ z))
         defect = defect - mass_e * (mode.left @ defect)
-        residual = float(np.linalg.norm(defect)) / norm
+        residual = float(np.linalg.norm(defect / scale)) / norm
         if residual < JET_RESIDUAL:
             return z, residual
         stalled = stalled + 1 if residual > 0.5 * best else 0
