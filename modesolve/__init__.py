@@ -4,7 +4,8 @@ The rooms are in the order of the work::
 
     cross_section  what a designer states
     layout         the same as axes of walls and media: what is solved
-    grid           coordinate map, graded walls, margins
+    maps           coordinate maps: graded axes, sloped walls, margins
+    grid           the logical grid and its metric
     operators      incidence and mass matrices
     eigen          ordering, factorisation, nearest modes, left vectors
     jets           frequency series of a mode

@@ -13,13 +13,16 @@ from dataclasses import dataclass, fields
 import materials
 from materials.common.errors import InputError, OutOfRange
 from materials.medium import Medium
-from modesolve.grid import Axis
 from modesolve.layout import Layout
+from modesolve.maps import Axis, WallLine
 
 __all__ = ["CrossSection"]
 
 #: Allowed sizes, um.
 SMALLEST_UM, LARGEST_UM = 0.005, 100.0
+
+#: Least inclination of an etched wall, degrees from the chip's plane.
+FLATTEST_DEG = 60.0
 
 
 @dataclass(frozen=True, slots=True)
@@ -38,7 +41,7 @@ class CrossSection:
     slab_um : float
         What is left of the core film beside the rib, 0 <= slab < height.
     sidewall_deg : float
-        Angle of the etched walls; 90 is vertical.
+        Angle of the etched walls, 60 to 120: 90 is vertical, less is wider at the bottom.
     width_at : float
         Height fraction of the etched wall where ``width_um`` holds: 1 its top, 0 its
         bottom.
@@ -56,7 +59,7 @@ class CrossSection:
         A size outside 0.005 to 100 um, a slab as thick as the core, an angle or
         fraction outside its range, NaN.
     InputError
-        A sidewall or a bend that this version does not solve.
+        A bend, which this version does not solve.
     MissingData
         A temperature with a medium that has no dn/dT.
 
@@ -101,28 +104,54 @@ class CrossSection:
                 f"slab_um = {self.slab_um:g} um: slab and etch depth must each be at least "
                 f"{SMALLEST_UM:g} um (or the slab exactly 0)"
             )
-        self._check_later_shapes()
+        self._check_shape()
         if self.temperature_degc is not None:
             put(
                 self, "temperature_degc", _number(self.temperature_degc, "temperature_degc", "degC")
             )
 
-    def _check_later_shapes(self) -> None:
-        if _number(self.sidewall_deg, "sidewall_deg", "deg") != 90.0:
-            raise InputError(
-                f"sidewall_deg = {self.sidewall_deg:g}: this version solves vertical walls; "
-                "set it to 90"
+    def _check_shape(self) -> None:
+        put = object.__setattr__
+        angle = _number(self.sidewall_deg, "sidewall_deg", "deg")
+        if not FLATTEST_DEG <= angle <= 180.0 - FLATTEST_DEG:
+            raise OutOfRange(
+                f"sidewall_deg = {angle:g}: allowed {FLATTEST_DEG:g} to {180.0 - FLATTEST_DEG:g}; "
+                "90 is vertical, less is wider at the bottom"
             )
+        put(self, "sidewall_deg", angle)
         if not 0.0 <= _number(self.width_at, "width_at", "") <= 1.0:
             raise OutOfRange(
                 f"width_at = {self.width_at:g}: allowed 0 (bottom of the etched wall) "
                 "to 1 (its top)"
+            )
+        line = self.wall_line()
+        narrowest = 2.0 * min(line.half_bottom_um, line.half_top_um)
+        if narrowest < SMALLEST_UM:
+            raise OutOfRange(
+                f"sidewall_deg = {angle:g}: with width_um = {self.width_um:g} um at "
+                f"width_at = {self.width_at:g} the core is {narrowest:.4g} um wide at its "
+                f"narrow end; at least {SMALLEST_UM:g} um is needed: steepen the wall or widen "
+                "the core"
             )
         if self.bend_radius_um is not None:
             raise InputError(
                 f"bend_radius_um = {self.bend_radius_um}: this version solves straight guides; "
                 "leave it out"
             )
+
+    def wall_line(self) -> WallLine:
+        """The etched wall: half the core's width at the wall's bottom and top."""
+        depth = self.height_um - self.slab_um
+        slope = depth / math.tan(math.radians(self.sidewall_deg))  # how far it leans inwards
+        if self.sidewall_deg == 90.0:
+            slope = 0.0
+        half = 0.5 * self.width_um
+        return WallLine(
+            bottom_um=self.slab_um,
+            top_um=self.height_um,
+            half_bottom_um=half + self.width_at * slope,
+            half_top_um=half - (1.0 - self.width_at) * slope,
+        )
 
     @property
     def media(self) -> tuple[Medium, ...]:
@@ -158,6 +187,7 @@ class CrossSection:
             fill=tuple(tuple(row[i] for row in rows) for i in (0, 1)),
             core=core,
             mirror=True,
+            etched_wall=None if self.sidewall_deg == 90.0 else self.wall_line(),
         )
 
     def _stated(self) -> tuple[Medium, ...]:

@@ -35,8 +35,8 @@ from materials.common.results import (
 from modesolve.band import Band, BandFunction, leja_nodes
 from modesolve.cross_section import CrossSection
 from modesolve.curve import CurveReport, DispersionCurve
-from modesolve.grid import Margins
 from modesolve.layout import Layout
+from modesolve.maps import Margins
 from modesolve.mode import (
     check_core,
     checked_wavelength,

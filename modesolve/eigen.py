@@ -21,7 +21,7 @@ import scipy.sparse as sp
 from scipy.sparse.linalg import ArpackError, ArpackNoConvergence, LinearOperator, eigs, splu
 
 from materials.common.errors import NotConverged, SolverError
-from modesolve.operators import Operators, Topology, Walls
+from modesolve.operators import Boundary, Operators, Topology
 
 __all__ = ["Factorisation", "Pencil", "RawMode", "dissection_order", "nearest_modes", "polish"]
 
@@ -33,14 +33,14 @@ LEAF = 12
 
 
 @lru_cache(maxsize=64)
-def dissection_order(shape: tuple[int, int], walls: Walls, reach: float = 1.0) -> np.ndarray:
+def dissection_order(shape: tuple[int, int], boundary: Boundary, reach: float = 1.0) -> np.ndarray:
     """Nested-dissection order of the edges of a grid.
 
     Parameters
     ----------
     shape : tuple of int
         Cells along u and v.
-    walls : Walls
+    boundary : Boundary
     reach : float
         Width of the separating strip, in cells: 1 where the metric has no uv term,
         2 where it has one (the stencil is then wider).
@@ -49,7 +49,7 @@ def dissection_order(shape: tuple[int, int], walls: Walls, reach: float = 1.0) -
     -------
     ndarray of int, shape (edges,)
     """
-    positions = Topology(shape, walls).edge_positions()
+    positions = Topology(shape, boundary).edge_positions()
     out: list[np.ndarray] = []
     _dissect(positions, np.arange(len(positions)), reach, out)
     order = np.concatenate(out)
@@ -161,7 +161,7 @@ class Pencil:
         self.factorisations += 1
         topology = self.operators.topology
         reach = 1.0 if _is_diagonal(self.mass) else 2.0
-        order = dissection_order(topology.shape, topology.walls, reach)
+        order = dissection_order(topology.shape, topology.boundary, reach)
         return Factorisation(sp.csr_array(self.matrix - shift * self.mass), order)
 
     def mode(self, eigenvalue: complex, right: np.ndarray) -> RawMode:

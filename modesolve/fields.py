@@ -10,7 +10,7 @@ from materials.common.results import Result, frozen_array, quantity
 from modesolve.integrals import quarter_fields
 from modesolve.jets import Jet
 from modesolve.layout import Layout
-from modesolve.operators import Operators, Walls
+from modesolve.operators import Boundary, Operators
 
 __all__ = ["FieldMap", "field_map"]
 
@@ -29,7 +29,7 @@ class FieldMap(Result):
     e_z: np.ndarray = quantity("Ez", "1", ("x_um", "y_um"))
 
 
-def field_map(layout: Layout, operators: Operators, jet: Jet, walls: Walls) -> FieldMap:
+def field_map(layout: Layout, operators: Operators, jet: Jet, boundary: Boundary) -> FieldMap:
     """Field of a mode on its finest grid, unfolded at the mirror plane."""
     f = quarter_fields(operators, jet)
     components = [np.mean(part[0], axis=(-2, -1)) for part in (f.e_x, f.e_y, f.e_z)]
@@ -37,7 +37,7 @@ def field_map(layout: Layout, operators: Operators, jet: Jet, walls: Walls) -> F
     x, y = x[:, 0], y[0, :]
     if layout.mirror:
         # an electric wall leaves the normal component even and the tangential ones odd
-        even = 1.0 if walls.left == "electric" else -1.0
+        even = 1.0 if boundary.left == "electric" else -1.0
         signs = (even, -even, -even)
         components = [
             np.concatenate([sign * part[::-1], part])

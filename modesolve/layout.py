@@ -8,24 +8,39 @@ run through the same grid, operators and ladder.
 from __future__ import annotations
 
 from dataclasses import dataclass, field, replace
+from enum import IntEnum
+from functools import partial
 
 import numpy as np
 
 from materials.common.constants import C_UM_PER_PS
 from materials.medium import Medium
-from modesolve.grid import EVEN, Axis, Grid, Margins
-from modesolve.operators import Operators, Walls
+from modesolve.grid import Grid
+from modesolve.maps import EVEN, Axis, Margins, SlopedWalls, WallLine
+from modesolve.operators import Boundary, Operators
 
-__all__ = ["SLAB_WIDTH_UM", "Layout"]
+__all__ = ["SLAB_WIDTH_UM", "Corners", "Layout", "decay_constant"]
 
 #: Width of the single cell that stands for an infinitely wide slab, um. It is narrow, so
 #: that what varies across it lies far below every cut-off.
 SLAB_WIDTH_UM = 0.01
 
 
+class Corners(IntEnum):
+    """How fast the error at a section's corners falls: hard ones leave a slower term.
+
+    Hard is a corner that touches three media, or the foot of a rib, which the core fills
+    from three sides.
+    """
+
+    NONE = 0
+    PLAIN = 1
+    HARD = 2
+
+
 @dataclass(frozen=True, slots=True)
 class Layout:
-    """Axes, media and walls.
+    """Axes, media and boundary.
 
     Parameters
     ----------
@@ -37,11 +52,13 @@ class Layout:
         ``fill[i][j]`` is the index into ``media`` of segment i across and j up.
     core : int
         Index of the medium that counts as the core.
-    walls : Walls
+    boundary : Boundary
         Boundary conditions of the box.
     mirror : bool
         True when the low end across is the mirror plane of a symmetric section, so that
         every integral stands for half the section and both parities are wanted.
+    etched_wall : WallLine or None
+        Line of the etched wall where it is not vertical.
     """
 
     across: Axis
@@ -49,23 +66,27 @@ class Layout:
     media: tuple[Medium, ...]
     fill: tuple[tuple[int, ...], ...]
     core: int
-    walls: Walls = field(default_factory=Walls)
+    boundary: Boundary = field(default_factory=Boundary)
     mirror: bool = False
+    etched_wall: WallLine | None = None
 
     def grid(self, margins: Margins, refinement: int) -> Grid:
         """The grid of one refinement."""
-        return Grid.build(self.across, self.up, margins, refinement)
+        shape = None
+        if self.etched_wall is not None:
+            shape = partial(SlopedWalls, half_width_um=self.across.walls[-1], line=self.etched_wall)
+        return Grid.build(self.across, self.up, margins, refinement, shape)
 
-    def operators(self, grid: Grid, walls: Walls) -> Operators:
+    def operators(self, grid: Grid, boundary: Boundary) -> Operators:
         """Matrices on a grid of this layout."""
         filled = np.array(self.fill)[grid.segment_u[:, None], grid.segment_v[None, :]]
-        return Operators(grid, walls, filled, len(self.media))
+        return Operators(grid, boundary, filled, len(self.media))
 
-    def parities(self) -> tuple[Walls, ...]:
-        """Walls to solve with: both kinds of mirror plane, or the walls as they are."""
+    def parities(self) -> tuple[Boundary, ...]:
+        """Boundaries to solve with: both kinds of mirror plane, or the one there is."""
         if not self.mirror:
-            return (self.walls,)
-        return (replace(self.walls, left="electric"), replace(self.walls, left="magnetic"))
+            return (self.boundary,)
+        return (replace(self.boundary, left="electric"), replace(self.boundary, left="magnetic"))
 
     def indices(self, omega: float) -> np.ndarray:
         """Refractive index of each medium at ``omega`` (rad/ps)."""
@@ -94,20 +115,26 @@ class Layout:
             masks.append((segment >= first) & (segment < last))
         return masks[0][:, None] & masks[1][None, :]
 
-    def corner_media(self) -> int:
-        """Most media that meet in one corner; 1 where there is no corner."""
+    def corners(self) -> Corners:
+        """The most troublesome kind of corner in the section."""
         fill = np.array(self.fill)
-        corners = [
-            np.unique(fill[i : i + 2, j : j + 2]).size
-            for i in range(fill.shape[0] - 1)
-            for j in range(fill.shape[1] - 1)
-        ]
-        return max(corners, default=1)
+        worst = Corners.NONE
+        for i in range(fill.shape[0] - 1):
+            for j in range(fill.shape[1] - 1):
+                block = fill[i : i + 2, j : j + 2]
+                media = np.unique(block).size
+                if media == 1 or np.all(block[0] == block[1]) or np.all(block[:, 0] == block[:, 1]):
+                    continue  # flat films run through
+                foot = int(np.sum(block == self.core)) == 3
+                worst = max(worst, Corners.HARD if media > 2 or foot else Corners.PLAIN)
+        return worst
 
     def column(self, index: int) -> Layout:
         """The stack of column ``index``, uniform across: a slab one cell wide."""
         across = Axis((0.0, SLAB_WIDTH_UM), "wall", "wall", uniform=True, grading=EVEN)
-        return replace(self, across=across, fill=(self.fill[index],), mirror=False)
+        return replace(
+            self, across=across, fill=(self.fill[index],), mirror=False, etched_wall=None
+        )
 
     def side_background(self, side: str, omega: float) -> float:
         """Highest index that a field can run away with through an open side.

@@ -259,7 +259,7 @@ def mode_from(
         index_weight=frozen_array(weights(resolved.values)),
         beta_series=frozen_array(resolved.values["beta"]),
         section=section,
-        field_map=field_map(layout, *resolved.finest, resolved.seed.walls),
+        field_map=field_map(layout, *resolved.finest, resolved.seed.boundary),
         report=resolved.report,
         error=ErrorBars(
             bars,

@@ -27,14 +27,14 @@ import scipy.sparse as sp
 
 from modesolve.grid import Grid, Metric
 
-__all__ = ["MediumMass", "Operators", "Topology", "Walls"]
+__all__ = ["Boundary", "MediumMass", "Operators", "Topology"]
 
 #: A quarter cell's share of the logical unit cell.
 QUARTER = 0.25
 
 
 @dataclass(frozen=True, slots=True)
-class Walls:
+class Boundary:
     """Boundary condition on each side of the box.
 
     "electric": tangential E vanishes; "magnetic": tangential H vanishes.
@@ -47,7 +47,7 @@ class Walls:
 
 
 class Topology:
-    """Numbering and incidence of a grid with given walls.
+    """Numbering and incidence of a grid with a given boundary.
 
     Edges along u come first, then edges along v; edges and nodes lying in an electric
     wall carry no unknown and are left out.
@@ -61,21 +61,21 @@ class Topology:
     curl : sparse, shape (cells, edges)
     """
 
-    def __init__(self, shape: tuple[int, int], walls: Walls) -> None:
+    def __init__(self, shape: tuple[int, int], boundary: Boundary) -> None:
         n_u, n_v = shape
         keep_u = np.ones((n_u, n_v + 1), dtype=bool)
         keep_v = np.ones((n_u + 1, n_v), dtype=bool)
         keep_node = np.ones((n_u + 1, n_v + 1), dtype=bool)
         for side, index in (("bottom", 0), ("top", -1)):
-            if getattr(walls, side) == "electric":
+            if getattr(boundary, side) == "electric":
                 keep_u[:, index] = False
                 keep_node[:, index] = False
         for side, index in (("left", 0), ("right", -1)):
-            if getattr(walls, side) == "electric":
+            if getattr(boundary, side) == "electric":
                 keep_v[index, :] = False
                 keep_node[index, :] = False
         self.shape = shape
-        self.walls = walls
+        self.boundary = boundary
         self.edge_u = _number(keep_u, 0)
         self.edge_v = _number(keep_v, int(keep_u.sum()))
         self.node = _number(keep_node, 0)
@@ -243,16 +243,18 @@ class Operators:
     Parameters
     ----------
     grid : Grid
-    walls : Walls
+    boundary : Boundary
     medium_of_cell : ndarray of int, shape (n_u, n_v)
         Index of the medium filling each cell, 0 .. media - 1.
     media : int
         Number of media.
     """
 
-    def __init__(self, grid: Grid, walls: Walls, medium_of_cell: np.ndarray, media: int) -> None:
+    def __init__(
+        self, grid: Grid, boundary: Boundary, medium_of_cell: np.ndarray, media: int
+    ) -> None:
         self.grid = grid
-        self.topology = Topology(grid.shape, walls)
+        self.topology = Topology(grid.shape, boundary)
         metric = grid.metric
         self.medium_of_cell = medium_of_cell
         uu, vv, uv = _isotropic_across(metric)

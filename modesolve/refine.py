@@ -27,11 +27,11 @@ from materials.common import series
 from materials.common.constants import C_UM_PER_PS
 from materials.common.errors import InputError, NoGuidedMode, NotConverged
 from modesolve.eigen import Pencil, nearest_modes, polish
-from modesolve.grid import Margins
 from modesolve.integrals import mode_series
 from modesolve.jets import Jet, mode_jet
-from modesolve.layout import Layout
-from modesolve.operators import Operators, Walls
+from modesolve.layout import Corners, Layout
+from modesolve.maps import Margins
+from modesolve.operators import Boundary, Operators
 from modesolve.seeds import (
     ABOVE,
     SEARCHES,
@@ -51,11 +51,11 @@ LADDER = (2, 3, 4, 5, 6)
 #: Order of the frequency series.
 ORDER = 4
 
-#: Share of each of the ladder's two changes that goes into the error bar, by how many
-#: media meet in a corner: the more, the slower the last term left. Calibrated on 80 modes
-#: (11 quantities each) of nitride and silicon guides against ladders up to m = 14: 97 % of
-#: the errors lie inside their bars, 61 % of the bars are below thirty errors.
-BAR_SHARES = {1: 0.2, 2: 0.4, 3: 0.8, 4: 0.8}
+#: Share of each of the ladder's two changes that goes into the error bar, by the corners
+#: of the section. Calibrated on 80 modes (11 quantities each) of nitride and silicon guides
+#: against ladders up to m = 14: 97 % of the errors lie inside their bars, 60 % of the bars
+#: are below thirty errors.
+BAR_SHARES = {Corners.NONE: 0.2, Corners.PLAIN: 0.4, Corners.HARD: 0.8}
 
 #: Place in the ladder of the grid on which the outer walls are turned.
 WALL_LEVEL = 2
@@ -254,7 +254,7 @@ class _Climb:
         """Solve one more grid; the first one also settles the margins."""
         if self.margins is None:
             self.margins = self._settle(refinement)
-        level = self._solve(refinement, self._predicted(refinement), self.seed.walls)
+        level = self._solve(refinement, self._predicted(refinement), self.seed.boundary)
         self.levels.append(level)
         return level
 
@@ -262,19 +262,19 @@ class _Climb:
         """Margins from the decay at the index that the coarsest grid itself gives."""
         for _ in range(2):
             margins = margins_for(self.backgrounds, self.omega, self._sized())
-            pencil = self._pencil(margins, refinement, self.seed.walls)
+            pencil = self._pencil(margins, refinement, self.seed.boundary)
             shift = (self.k0 * self._sized()) ** 2 * ABOVE
             mode, _, _ = recognise(pencil, shift, self.seed, refinement)
             self.factorisations += pencil.factorisations
-            self.seed = make_seed(pencil.operators, mode, self.k0, self.seed.walls, refinement)
+            self.seed = make_seed(pencil.operators, mode, self.k0, self.seed.boundary, refinement)
         return margins_for(self.backgrounds, self.omega, self._sized())
 
     def _sized(self) -> float:
         """The index that margins are sized for."""
         return max(self.seed.n_eff, self.cutoff + LEAST_STEP)
 
-    def _pencil(self, margins: Margins, refinement: int, walls: Walls) -> Pencil:
-        operators = self.layout.operators(self.layout.grid(margins, refinement), walls)
+    def _pencil(self, margins: Margins, refinement: int, boundary: Boundary) -> Pencil:
+        operators = self.layout.operators(self.layout.grid(margins, refinement), boundary)
         return Pencil(operators, self.k0, self.permittivity[:, 0])
 
     def _predicted(self, refinement: int) -> float:
@@ -290,10 +290,10 @@ class _Climb:
             squared += slope * (1.0 / refinement**2 - b)
         return squared * ABOVE
 
-    def _solve(self, refinement: int, shift: float, walls: Walls) -> _Level:
+    def _solve(self, refinement: int, shift: float, boundary: Boundary) -> _Level:
         """The mode on one grid, checked, with its series and integrals."""
         assert self.margins is not None  # settled by the first step
-        pencil = self._pencil(self.margins, refinement, walls)
+        pencil = self._pencil(self.margins, refinement, boundary)
         mode, factorisation, others = recognise(pencil, shift, self.seed, refinement)
         mode = polish(pencil, factorisation, mode)
         allowed = pencil.residual_limit(mode.eigenvalue)
@@ -307,7 +307,7 @@ class _Climb:
         self.residual = max(self.residual, mode.residual)
         self.jet_residual = max(self.jet_residual, jet.residual)
         # the look of the mode here and now, for the next grid
-        self.seed = make_seed(pencil.operators, mode, self.k0, self.seed.walls, refinement)
+        self.seed = make_seed(pencil.operators, mode, self.k0, self.seed.boundary, refinement)
         integrals = mode_series(self.layout, pencil.operators, jet)
         return _Level(refinement, pencil.operators, jet, integrals)
 
@@ -331,8 +331,8 @@ class _Climb:
         sides = self.layout.open_sides()
         if not sides:
             return {key: np.zeros_like(value) for key, value in level.series.items()}
-        walls = replace(self.seed.walls, **dict.fromkeys(sides, "magnetic"))
-        other = self._solve(level.refinement, level.squared * ABOVE, walls)
+        boundary = replace(self.seed.boundary, **dict.fromkeys(sides, "magnetic"))
+        other = self._solve(level.refinement, level.squared * ABOVE, boundary)
         return {key: other.series[key] - value for key, value in level.series.items()}
 
     def _extrapolated(self, first: int, last: int) -> dict[str, np.ndarray]:
@@ -353,7 +353,7 @@ class _Climb:
         seed = replace(self.seed, n_eff=n_eff)
         finest = self.levels[-1]
         step = self._wall_step()
-        share = BAR_SHARES[self.layout.corner_media()]
+        share = BAR_SHARES[self.layout.corners()]
         alternates = (
             Alternate("ladder a grid lower", share, self._extrapolated(0, count - 1)),
             Alternate("ladder with a grid less", share, self._extrapolated(2, count)),

@@ -15,9 +15,9 @@ import numpy as np
 from materials.common.constants import C_UM_PER_PS
 from materials.common.errors import NotConverged, TooCloseToCutoff
 from modesolve.eigen import Factorisation, Pencil, RawMode, nearest_modes
-from modesolve.grid import Margins
 from modesolve.layout import Layout, decay_constant
-from modesolve.operators import Operators, Walls
+from modesolve.maps import Margins
+from modesolve.operators import Boundary, Operators
 
 __all__ = [
     "Seed",
@@ -62,7 +62,7 @@ class Seed:
     ----------
     n_eff : float
         Estimate of the effective index.
-    walls : Walls
+    boundary : Boundary
         The parity it belongs to.
     fingerprint : ndarray
         Transverse field on the blocks of the unit grid, normalised.
@@ -70,7 +70,7 @@ class Seed:
     """
 
     n_eff: float
-    walls: Walls
+    boundary: Boundary
     fingerprint: np.ndarray
     te_fraction: float
 
@@ -118,13 +118,13 @@ def overlap(a: np.ndarray, b: np.ndarray) -> float:
 
 
 def make_seed(
-    operators: Operators, mode: RawMode, k0: float, walls: Walls, refinement: int
+    operators: Operators, mode: RawMode, k0: float, boundary: Boundary, refinement: int
 ) -> Seed:
     """The seed of a mode on a grid of the given refinement."""
     look = fingerprint(operators, mode.right, refinement)
     share = float(np.sum(np.abs(look[0]) ** 2))
     n_eff = float(np.sqrt(max(np.real(mode.eigenvalue), 0.0)) / k0)
-    return Seed(n_eff, walls, look, share)
+    return Seed(n_eff, boundary, look, share)
 
 
 def recognise(
@@ -175,8 +175,8 @@ def _stack_index(layout: Layout, column: int, omega: float, background: float) -
         return background
     stack = layout.column(column)
     best = background
-    for walls in (Walls(), Walls(left="magnetic", right="magnetic")):
-        polarised = replace(stack, walls=walls)
+    for boundary in (Boundary(), Boundary(left="magnetic", right="magnetic")):
+        polarised = replace(stack, boundary=boundary)
         coarse, fine = (
             find_seeds(polarised, omega, 1, background, refinement) for refinement in STACK_GRIDS
         )
@@ -242,12 +242,12 @@ def find_seeds(
     permittivity = layout.permittivity(omega, 0)[:, 0]
     shift = (k0 * top) ** 2
     seeds = []
-    for walls in layout.parities():
-        operators = layout.operators(grid, walls)
+    for boundary in layout.parities():
+        operators = layout.operators(grid, boundary)
         pencil = Pencil(operators, k0, permittivity)
         inner = layout.inner_cells(grid)
         for mode in nearest_modes(pencil, pencil.factorise(shift), shift, count + 3):
-            seed = make_seed(operators, mode, k0, walls, refinement)
+            seed = make_seed(operators, mode, k0, boundary, refinement)
             bound = field_share(operators, mode.right, inner) > LEAST_INNER_SHARE
             if seed.n_eff > (cutoff - slack if bound else cutoff):
                 seeds.append(seed)

@@ -5,9 +5,9 @@ from __future__ import annotations
 import numpy as np
 
 from materials.medium import Medium
-from modesolve.grid import EVEN, Axis, Grading
 from modesolve.layout import SLAB_WIDTH_UM, Layout
-from modesolve.operators import Walls
+from modesolve.maps import EVEN, Axis, Grading
+from modesolve.operators import Boundary
 
 
 def unique(*media: Medium) -> tuple[tuple[Medium, ...], list[int]]:
@@ -27,7 +27,7 @@ def slab(film: Medium, below: Medium, above: Medium, thickness_um: float, kind: 
         media=media,
         fill=((low, core, high),),
         core=core,
-        walls=Walls(left=wall, right=wall),
+        boundary=Boundary(left=wall, right=wall),
     )
 
 

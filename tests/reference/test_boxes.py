@@ -12,7 +12,7 @@ from layouts import box, observed_orders
 
 import materials
 from materials.common.constants import C_UM_PER_PS, omega_from_um
-from modesolve.grid import EVEN, Grading
+from modesolve.maps import EVEN, Grading
 from modesolve.refine import refine, solve_level
 from modesolve.seeds import find_seeds
 

@@ -13,7 +13,7 @@ import pytest
 from reference import test_boxes, test_channels, test_slabs
 
 from materials.common.constants import C_UM_PER_PS
-from modesolve.grid import EVEN, Grading
+from modesolve.maps import EVEN, Grading
 from modesolve.refine import refine
 
 CONVERGED = tomllib.loads(Path(__file__).with_name("channel_values.toml").read_text())

@@ -29,7 +29,8 @@ def made(**more):
         (dict(slab_um=0.8), OutOfRange, "less than height_um"),
         (dict(slab_um=-0.1), OutOfRange, "slab_um"),
         (dict(slab_um=0.001), OutOfRange, "at least"),
-        (dict(sidewall_deg=80.0), InputError, "vertical"),
+        (dict(sidewall_deg=50.0), OutOfRange, "60 to 120"),
+        (dict(width_um=0.3, sidewall_deg=70.0, width_at=0.0), OutOfRange, "narrow end"),
         (dict(width_at=1.5), OutOfRange, "width_at"),
         (dict(bend_radius_um=50.0), InputError, "straight"),
         (dict(core="Si3N4-Luke2016"), UnknownName, "Si3N4-Luke2015"),
@@ -73,3 +74,16 @@ def test_temperature_moves_every_medium():
     cold, hot = made().layout(), made(temperature_degc=80.0).layout()
     omega = 1215.0
     assert all(hot.indices(omega) > cold.indices(omega))
+
+
+@pytest.mark.parametrize(
+    ("angle", "at", "bottom", "top"),
+    [(90.0, 1.0, 1.6, 1.6), (80.0, 1.0, 1.8115, 1.6), (80.0, 0.0, 1.6, 1.3885),
+     (100.0, 0.5, 1.4942, 1.7058)],
+)  # fmt: skip
+def test_walls_lean_about_the_height_where_the_width_holds(angle, at, bottom, top):
+    """0.6 um of etch: 0.6/tan(80 deg) = 0.1058 um on each side."""
+    line = made(slab_um=0.2, sidewall_deg=angle, width_at=at).wall_line()
+    assert 2.0 * line.half_bottom_um == pytest.approx(bottom, abs=1e-4)
+    assert 2.0 * line.half_top_um == pytest.approx(top, abs=1e-4)
+    assert (line.bottom_um, line.top_um) == (0.2, 0.8)

@@ -11,8 +11,8 @@ import materials
 from materials.common.constants import C_UM_PER_PS, omega_from_um
 from modesolve import CrossSection
 from modesolve.eigen import Pencil, dissection_order, nearest_modes, polish
-from modesolve.grid import Margins
-from modesolve.operators import Walls
+from modesolve.maps import Margins
+from modesolve.operators import Boundary
 
 OMEGA = omega_from_um(1.55)
 
@@ -39,8 +39,8 @@ def shift(pencil):
 
 @pytest.mark.parametrize("reach", [1.0, 2.0])
 def test_order_is_a_permutation_with_any_walls(reach):
-    for walls in (Walls(), Walls(left="magnetic")):
-        order = dissection_order((13, 21), walls, reach)
+    for boundary in (Boundary(), Boundary(left="magnetic")):
+        order = dissection_order((13, 21), boundary, reach)
         assert np.array_equal(np.sort(order), np.arange(order.size))
 
 
@@ -55,7 +55,7 @@ def test_dissection_takes_fewer_multiplications_than_the_default_order(pencil, s
     """The default is a column minimum-degree order."""
     matrix = sp.csr_array(pencil.matrix - shift * pencil.mass)
     topology = pencil.operators.topology
-    order = dissection_order(topology.shape, topology.walls, 1.0)
+    order = dissection_order(topology.shape, topology.boundary, 1.0)
     own = splu(
         sp.csc_array(matrix[order][:, order]),
         permc_spec="NATURAL",

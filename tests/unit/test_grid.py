@@ -5,7 +5,8 @@ from __future__ import annotations
 import numpy as np
 import pytest
 
-from modesolve.grid import EVEN, Axis, Grid, Margins
+from modesolve.grid import Grid
+from modesolve.maps import EVEN, Axis, Margins
 
 
 def grid(refinement=3, **margins):

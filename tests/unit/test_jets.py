@@ -9,9 +9,9 @@ import materials
 from materials.common.constants import C_UM_PER_PS, omega_from_um
 from modesolve import CrossSection
 from modesolve.eigen import Pencil, nearest_modes, polish
-from modesolve.grid import Margins
 from modesolve.integrals import mode_series
 from modesolve.jets import mode_jet
+from modesolve.maps import Margins
 
 #: Central-difference weights of the 9-point stencil (Fornberg, Math. Comp. 51, 699 (1988)).
 FIRST = np.array([1 / 280, -4 / 105, 1 / 5, -4 / 5, 0, 4 / 5, -1 / 5, 4 / 105, -1 / 280])

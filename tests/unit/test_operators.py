@@ -9,8 +9,9 @@ from layouts import box, observed_orders
 import materials
 from materials.common.constants import C_UM_PER_PS, omega_from_um
 from modesolve.eigen import Pencil, nearest_modes
-from modesolve.grid import EVEN, Grading, Grid, Margins
-from modesolve.operators import Operators, Topology, Walls
+from modesolve.grid import Grid
+from modesolve.maps import EVEN, Grading, Margins
+from modesolve.operators import Boundary, Operators, Topology
 
 
 class Wavy:
@@ -36,12 +37,12 @@ def wavy_operators(layout, refinement, strength):
     plain = layout.grid(Margins(), refinement)
     chart = Wavy(plain.map, 0.6, 0.5, 0.2, strength)
     grid = Grid.on(chart, plain.segment_u, plain.segment_v)
-    return layout.operators(grid, layout.walls)
+    return layout.operators(grid, layout.boundary)
 
 
 def test_curl_of_a_gradient_vanishes_with_any_walls():
-    for walls in (Walls(), Walls(left="magnetic", top="magnetic")):
-        topology = Topology((5, 7), walls)
+    for boundary in (Boundary(), Boundary(left="magnetic", top="magnetic")):
+        topology = Topology((5, 7), boundary)
         product = topology.curl @ topology.gradient
         assert product.nnz == 0 or np.abs(product.data).max() == 0.0
 
@@ -59,7 +60,7 @@ def test_masses_are_symmetric_and_positive(strength):
 def test_media_share_the_vacuum_mass():
     """In a straight guide the media's unit masses add up to the inverse-mu mass."""
     layout = box(materials.constant(2.0), materials.constant(1.0), 0.6, 0.5, 0.2, Grading())
-    operators = layout.operators(layout.grid(Margins(), 2), layout.walls)
+    operators = layout.operators(layout.grid(Margins(), 2), layout.boundary)
     total = sum(m.across for m in operators.media)
     assert abs(total - operators.inverse_mu).max() < 1e-12 * abs(operators.inverse_mu).max()
 
@@ -86,7 +87,7 @@ def test_a_curved_grid_gives_the_same_modes_to_second_order():
 
 def test_operators_are_free_of_frequency_and_linear_in_permittivity():
     layout = box(materials.constant(2.0), materials.constant(1.0), 0.6, 0.5, 0.2, EVEN)
-    operators: Operators = layout.operators(layout.grid(Margins(), 1), layout.walls)
+    operators: Operators = layout.operators(layout.grid(Margins(), 1), layout.boundary)
     one = operators.pencil(0.0, np.array([4.0, 1.0]))
     two = operators.pencil(3.0, np.array([4.0, 1.0]))
     across = 4.0 * operators.media[0].across + operators.media[1].across
