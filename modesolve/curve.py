@@ -13,6 +13,7 @@ from typing import Any
 
 import numpy as np
 
+from materials.common.alternates import Alternate, error_bar
 from materials.common.constants import (
     C_UM_PER_PS,
     PER_UM_TO_PER_KM,
@@ -78,9 +79,9 @@ class DispersionCurve(Result):
         Label, given at ``reference_um``; it stays with the mode.
     band_um : tuple of float
         Shortest and longest wavelength.
-    alternates : tuple of (name, weight, DispersionCurve)
-        The curve under each change its error bar stands for. The bar of any figure F
-        derived from a curve is the sum of weight times |F(alternate) - F(curve)|.
+    alternates : tuple of Alternate
+        The curve under each change its error bar stands for; see
+        `materials.common.alternates`.
     """
 
     mode: str
@@ -89,7 +90,7 @@ class DispersionCurve(Result):
     section: CrossSection
     reference_um: float
     report: CurveReport
-    alternates: tuple[tuple[str, float, DispersionCurve], ...] = ()
+    alternates: tuple[Alternate, ...] = ()
     notes: tuple[str, ...] = ()
     provenance: Provenance | None = None
     label: str = field(default="", kw_only=True)
@@ -207,19 +208,20 @@ class DispersionCurve(Result):
         return brentq(lambda w: float(self.beta_rad_per_um(w, 2)), low, high, xtol=1e-10)
 
     def _zero_dispersion_bar(self) -> np.ndarray:
-        """Error bars of the zero-dispersion wavelengths: that of beta2 over its slope."""
+        """Error bars of the zero-dispersion wavelengths, each paired with the nearest zero."""
         zeros = self.zero_dispersion_um()
-        omega = omega_from_um(zeros)
-        slope = PER_UM_TO_PER_KM * self.beta_rad_per_um(omega, 3) * omega / zeros
-        return np.abs(self._bar("beta2_ps2_per_km", zeros) / slope)
+
+        def paired(curve: DispersionCurve) -> np.ndarray:
+            found = curve.zero_dispersion_um()
+            if not found.size:
+                return np.full(zeros.shape, np.nan)
+            return found[np.argmin(np.abs(found[:, None] - zeros[None, :]), axis=0)]
+
+        return error_bar(paired, self, self.alternates)
 
     def _bar(self, key: str, wavelength_um):
         """Error bar of a method at wavelengths in um."""
-        value = np.asarray(getattr(self, key)(wavelength_um))
-        bar = np.zeros(value.shape)
-        for _, weight, other in self.alternates:
-            bar = bar + weight * np.abs(getattr(other, key)(wavelength_um) - value)
-        return _like(value, bar)
+        return error_bar(lambda curve: getattr(curve, key)(wavelength_um), self, self.alternates)
 
     def _omega(self, wavelength_um) -> np.ndarray:
         wavelength = np.asarray(wavelength_um, dtype=float)

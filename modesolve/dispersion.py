@@ -17,6 +17,7 @@ from functools import partial
 import numpy as np
 
 from materials.common import series
+from materials.common.alternates import Alternate
 from materials.common.constants import (
     C_UM_PER_PS,
     PER_UM_TO_PER_KM,
@@ -259,19 +260,17 @@ class _Build:
             report=report,
         )
 
-        alternates = [
-            (
-                a.name,
-                a.weight,
-                made(functions=self._functions([r.alternates[i].values for r in self.resolved])),
+        versions = []
+        for i, first in enumerate(self.resolved[0].alternates):
+            values = [r.alternates[i].version for r in self.resolved]
+            versions.append(
+                Alternate(first.name, first.weight, made(functions=self._functions(values)))
             )
-            for i, a in enumerate(self.resolved[0].alternates)
-        ]
         shorter = made(functions=self._functions(self._values(), -1))
-        alternates.append(("interpolation", 1.0, shorter))
+        versions.append(Alternate("interpolation", 1.0, shorter))
         return made(
             functions=self._functions(self._values()),
-            alternates=tuple(alternates),
+            alternates=tuple(versions),
             notes=section_notes(self.layout),
             provenance=make_provenance(
                 keys,

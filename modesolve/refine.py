@@ -20,10 +20,12 @@ import time
 from collections.abc import Callable
 from dataclasses import dataclass, replace
 from itertools import pairwise
+from typing import Any
 
 import numpy as np
 
 from materials.common import series
+from materials.common.alternates import Alternate, error_bar
 from materials.common.constants import C_UM_PER_PS
 from materials.common.errors import InputError, NoGuidedMode, NotConverged
 from modesolve.eigen import Pencil, nearest_modes, polish
@@ -42,7 +44,7 @@ from modesolve.seeds import (
     side_backgrounds,
 )
 
-__all__ = ["LADDER", "Alternate", "Resolved", "SolveReport", "refine", "solve_level"]
+__all__ = ["LADDER", "Resolved", "SolveReport", "refine", "solve_level"]
 
 #: Refinements of the default ladder: all but the first give the value, the first only
 #: serves the error bar.
@@ -82,19 +84,6 @@ class SolveReport:
 
 
 @dataclass(frozen=True, slots=True, eq=False)
-class Alternate:
-    """What a mode's series would be under one change that its error bar stands for.
-
-    The error bar of any figure F derived from a mode, or from a curve of modes, is the sum
-    over its alternates of ``weight`` times |F(alternate) - F|.
-    """
-
-    name: str
-    weight: float
-    values: dict[str, np.ndarray]
-
-
-@dataclass(frozen=True, slots=True, eq=False)
 class Resolved:
     """Extrapolated frequency series of a mode with their error bars.
 
@@ -104,8 +93,9 @@ class Resolved:
     values : dict of str to ndarray, shape (order + 1,)
         Taylor coefficients of every quantity.
     alternates : tuple of Alternate
-        The same quantities as they would be a grid lower, with other outer walls, with
-        a fitted medium's constant moved by one standard deviation.
+        The same quantities as they would be a grid lower, with a grid less, with other
+        outer walls, off by rounding, and with each constant of a fitted medium moved by
+        one standard deviation.
     seed : Seed
         With the resolved index, to find the mode again elsewhere.
     finest : tuple of (Operators, Jet)
@@ -119,16 +109,9 @@ class Resolved:
     finest: tuple[Operators, Jet]
     report: SolveReport
 
-    def bar(self, quantity: Callable[[dict[str, np.ndarray]], np.ndarray]) -> np.ndarray:
-        """Error bar of anything computed from ``values``.
-
-        The sum over the alternates of weight times |quantity(alternate) - quantity(values)|.
-        """
-        value = quantity(self.values)
-        bar = np.zeros(np.shape(value))
-        for alternate in self.alternates:
-            bar = bar + alternate.weight * np.abs(quantity(alternate.values) - value)
-        return bar
+    def bar(self, functional: Callable[[dict[str, np.ndarray]], Any]) -> Any:
+        """Error bar of anything computed from ``values``."""
+        return error_bar(functional, self.values, self.alternates)
 
 
 def neville(ladder: tuple[int, ...], values: list[np.ndarray]) -> np.ndarray:

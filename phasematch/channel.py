@@ -16,10 +16,11 @@ from typing import Any
 
 import numpy as np
 
+from materials.common import inputs
 from materials.common.constants import omega_from_um
 from materials.common.errors import InputError
 from materials.common.results import ErrorBars, frozen_array
-from phasematch import inputs, mixing
+from phasematch import mixing
 from phasematch.channel_results import ChannelMap, ConversionBand, PairFlux
 from phasematch.conversion import BandEdges, find_band
 from phasematch.mixing import LASER_CAUTION, Curve, error_bar

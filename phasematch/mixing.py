@@ -24,6 +24,7 @@ from typing import Any, NamedTuple, Protocol
 
 import numpy as np
 
+from materials.common import alternates
 from materials.common.constants import omega_from_um, um_from_omega
 
 #: Stated wherever a pump power is.
@@ -80,12 +81,7 @@ def error_bar(curve: Curve, functional: Callable[[Any], Any]) -> Any:
     float or ndarray
         sum_k weight_k |F(alternate_k) - F(curve)|; NaN where F is not finite.
     """
-    value = np.asarray(functional(curve), dtype=float)
-    bar = np.zeros(value.shape)
-    with np.errstate(invalid="ignore"):
-        for _, weight, other in curve.alternates:
-            bar = bar + weight * np.abs(np.asarray(functional(other), dtype=float) - value)
-    return np.where(np.isfinite(value), bar, np.nan)[()]
+    return alternates.error_bar(functional, curve, curve.alternates)
 
 
 # ---------------------------------------------------------------- energy

@@ -9,9 +9,9 @@ from typing import Any
 
 import numpy as np
 
+from materials.common import inputs
 from materials.common.constants import TWO_PI, omega_from_um, um_from_omega
 from materials.common.errors import InputError
-from phasematch import inputs
 from phasematch.mixing import Curve, inside, snap
 from phasematch.quadrature import integrate, phase_nodes
 

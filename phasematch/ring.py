@@ -14,10 +14,11 @@ from typing import Any
 
 import numpy as np
 
+from materials.common import inputs
 from materials.common.constants import C_UM_PER_PS, TWO_PI, omega_from_um, um_from_omega
 from materials.common.errors import OutOfRange
 from materials.common.results import ErrorBars, frozen_array
-from phasematch import cavity, inputs, ring_power
+from phasematch import cavity, ring_power
 from phasematch.bend_note import bend_note
 from phasematch.mixing import Curve, error_bar, inside, snap
 from phasematch.resonances import Lines, find_lines, order_range, ring_dispersion

@@ -10,9 +10,10 @@ from typing import TYPE_CHECKING, Any, NamedTuple
 
 import numpy as np
 
+from materials.common import inputs
 from materials.common.constants import C_UM_PER_PS, TWO_PI, um_from_omega
 from materials.common.results import ErrorBars, frozen_array
-from phasematch import cavity, inputs
+from phasematch import cavity
 from phasematch.mixing import LASER_CAUTION, Curve, error_bar, gamma_or_nan
 from phasematch.resonances import find_lines, order_range
 from phasematch.ring_results import PairRates, StimulatedIdler

@@ -1,0 +1,65 @@
+"""Error bars by alternates: one mechanism for every derived number.
+
+A result that carries an error bar keeps the versions of itself that it would be under
+each change the bar stands for: a grid lower, other outer walls, a fitted constant one
+standard deviation off. The bar of anything derived from the result then follows by
+deriving it from those versions too, however involved the derivation is.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Iterable
+from typing import Any, NamedTuple
+
+import numpy as np
+
+__all__ = ["Alternate", "error_bar"]
+
+
+class Alternate(NamedTuple):
+    """One changed version of a result.
+
+    Attributes
+    ----------
+    name : str
+        The change, in words.
+    weight : float
+        Share of the change that goes into a bar.
+    version : object
+        The result under that change, of the same type.
+    """
+
+    name: str
+    weight: float
+    version: Any
+
+
+def error_bar(functional: Callable[[Any], Any], best: Any, alternates: Iterable[Alternate]) -> Any:
+    """Error bar of a number, or an array of them, derived from a result.
+
+    Parameters
+    ----------
+    functional : callable
+        Takes a version of the result to a float or ndarray, always of the same shape.
+    best : object
+        The result itself.
+    alternates : iterable of Alternate
+
+    Returns
+    -------
+    float or ndarray
+        sum over the alternates of weight |functional(version) - functional(best)|; NaN where
+        the number itself is not finite.
+
+    Examples
+    --------
+    >>> error_bar(lambda x: x**2, 3.0, [Alternate("a step", 0.5, 3.1)])
+    0.305
+    """
+    value = np.asarray(functional(best), dtype=float)
+    bar = np.zeros(value.shape)
+    with np.errstate(invalid="ignore"):
+        for _, weight, version in alternates:
+            bar = bar + weight * np.abs(np.asarray(functional(version), dtype=float) - value)
+    out = np.where(np.isfinite(value), bar, np.nan)
+    return float(out) if out.ndim == 0 else out
