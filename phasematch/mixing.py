@@ -24,7 +24,8 @@ from typing import Any, NamedTuple, Protocol
 
 import numpy as np
 
-from materials.common import alternates
+from materials.common.alternates import Alternate
+from materials.common.alternates import error_bar as error_bar_of
 from materials.common.constants import omega_from_um, um_from_omega
 
 #: Stated wherever a pump power is.
@@ -57,7 +58,7 @@ class Curve(Protocol):
     @property
     def bend_radius_um(self) -> float | None: ...
     @property
-    def alternates(self) -> tuple[tuple[str, float, Any], ...]: ...
+    def alternates(self) -> tuple[Alternate, ...]: ...
 
     def beta_rad_per_um(self, omega_rad_per_ps: Any, derivative: int = 0) -> Any: ...
     def n_eff(self, wavelength_um: Any) -> Any: ...
@@ -81,7 +82,7 @@ def error_bar(curve: Curve, functional: Callable[[Any], Any]) -> Any:
     float or ndarray
         sum_k weight_k |F(alternate_k) - F(curve)|; NaN where F is not finite.
     """
-    return alternates.error_bar(functional, curve, curve.alternates)
+    return error_bar_of(functional, curve, curve.alternates)
 
 
 # ---------------------------------------------------------------- energy
