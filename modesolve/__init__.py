@@ -12,10 +12,13 @@ The rooms are in the order of the work::
     integrals      areas, gamma and weights as frequency series
     seeds          candidates, cut-off, margins, recognising a mode
     refine         the ladder of grids and the error bar
+    scan           the guided modes of a layout, labelled
+    quantities     the figures of a mode: names, units, how each follows
     mode           solve_modes and its result (fields: its field map)
     band           interpolation over frequency
     curve          a dispersion curve as a result
     dispersion     solving one over a band
+    tables         modes, curves, beta_k and tapers as tables
 
 Examples
 --------

@@ -16,8 +16,6 @@ import numpy as np
 from materials.common.alternates import Alternate, error_bar
 from materials.common.constants import (
     C_UM_PER_PS,
-    PER_UM_TO_PER_KM,
-    dispersion_from_beta2,
     omega_from_um,
     um_from_omega,
 )
@@ -25,27 +23,12 @@ from materials.common.errors import OutOfRange
 from materials.common.results import ErrorBars, Provenance, Result, Variable
 from modesolve.band import Band, BandFunction
 from modesolve.cross_section import CrossSection
+from modesolve.quantities import FIGURES
 
-__all__ = ["COLUMNS", "CurveReport", "DispersionCurve"]
+__all__ = ["CurveReport", "DispersionCurve"]
 
 #: Points of a written table.
 TABLE_POINTS = 201
-
-#: Methods of a curve that give one number a wavelength: long name, unit.
-COLUMNS = {
-    "n_eff": ("effective index", "1"),
-    "n_group": ("group index", "1"),
-    "beta2_ps2_per_km": ("group-velocity dispersion", "ps2/km"),
-    "beta3_ps3_per_km": ("third-order dispersion", "ps3/km"),
-    "beta4_ps4_per_km": ("fourth-order dispersion", "ps4/km"),
-    "dispersion_ps_per_nm_km": ("dispersion D", "ps/(nm km)"),
-    "effective_area_um2": ("effective area", "um2"),
-    "intensity_area_um2": ("intensity-form area", "um2"),
-    "power_area_um2": ("power-form area", "um2"),
-    "gamma_per_w_m": ("nonlinear coefficient", "1/(W m)"),
-    "te_fraction": ("TE fraction", "1"),
-    "core_power_fraction": ("power in the core", "1"),
-}
 
 
 @dataclass(frozen=True, slots=True)
@@ -124,7 +107,7 @@ class DispersionCurve(Result):
     @property
     def error(self) -> ErrorBars:
         """Error bars by method name, as functions of wavelength in um."""
-        bars: dict[str, Any] = {key: partial(self._bar, key) for key in COLUMNS}
+        bars: dict[str, Any] = {key: partial(self._bar, key) for key in FIGURES}
         bars["zero_dispersion_um"] = self._zero_dispersion_bar
         return ErrorBars(bars)
 
@@ -144,54 +127,51 @@ class DispersionCurve(Result):
 
     def n_eff(self, wavelength_um):
         """Effective index."""
-        return self._direct("n_eff", wavelength_um)
+        return self._figure("n_eff", wavelength_um)
 
     def n_group(self, wavelength_um):
         """Group index, c dbeta/domega."""
-        return C_UM_PER_PS * self._beta(wavelength_um, 1)
+        return self._figure("n_group", wavelength_um)
 
     def beta2_ps2_per_km(self, wavelength_um):
         """Group-velocity dispersion, ps2/km."""
-        return PER_UM_TO_PER_KM * self._beta(wavelength_um, 2)
+        return self._figure("beta2_ps2_per_km", wavelength_um)
 
     def beta3_ps3_per_km(self, wavelength_um):
         """Third-order dispersion, ps3/km."""
-        return PER_UM_TO_PER_KM * self._beta(wavelength_um, 3)
+        return self._figure("beta3_ps3_per_km", wavelength_um)
 
     def beta4_ps4_per_km(self, wavelength_um):
         """Fourth-order dispersion, ps4/km."""
-        return PER_UM_TO_PER_KM * self._beta(wavelength_um, 4)
+        return self._figure("beta4_ps4_per_km", wavelength_um)
 
     def dispersion_ps_per_nm_km(self, wavelength_um):
         """Dispersion D = -(2 pi c/lambda^2) beta2, ps/(nm km)."""
-        wavelength = np.asarray(wavelength_um, dtype=float)
-        return _like(
-            wavelength, dispersion_from_beta2(self.beta2_ps2_per_km(wavelength), wavelength)
-        )
+        return self._figure("dispersion_ps_per_nm_km", wavelength_um)
 
     def effective_area_um2(self, wavelength_um):
         """Nonlinear effective area 2 pi n2_core/(lambda gamma), um2."""
-        return self._direct("effective_area_um2", wavelength_um)
+        return self._figure("effective_area_um2", wavelength_um)
 
     def intensity_area_um2(self, wavelength_um):
         """Area in intensity form, (int |e|^2)^2 / int |e|^4, um2."""
-        return self._direct("intensity_area_um2", wavelength_um)
+        return self._figure("intensity_area_um2", wavelength_um)
 
     def power_area_um2(self, wavelength_um):
         """Area in power form, (int Sz)^2 / int Sz^2, um2."""
-        return self._direct("power_area_um2", wavelength_um)
+        return self._figure("power_area_um2", wavelength_um)
 
     def gamma_per_w_m(self, wavelength_um):
         """Nonlinear coefficient, 1/(W m); NaN where the core has no n2."""
-        return self._direct("gamma_per_w_m", wavelength_um)
+        return self._figure("gamma_per_w_m", wavelength_um)
 
     def te_fraction(self, wavelength_um):
         """int |Ex|^2 over int (|Ex|^2 + |Ey|^2)."""
-        return self._direct("te_fraction", wavelength_um)
+        return self._figure("te_fraction", wavelength_um)
 
     def core_power_fraction(self, wavelength_um):
         """Share of the power that flows in the core."""
-        return self._direct("core_power_fraction", wavelength_um)
+        return self._figure("core_power_fraction", wavelength_um)
 
     def zero_dispersion_um(self) -> np.ndarray:
         """Wavelengths in the band where beta2 vanishes, rising; empty where it does not."""
@@ -236,14 +216,16 @@ class DispersionCurve(Result):
             )
         return omega_from_um(wavelength)
 
-    def _beta(self, wavelength_um, derivative: int):
-        omega = self._omega(wavelength_um)
-        clipped = np.clip(omega, self.band.low, self.band.high)
-        return _like(omega, self.beta_rad_per_um(clipped, derivative))
+    def _figure(self, name: str, wavelength_um):
+        """A figure of `modesolve.quantities` at wavelengths in um."""
+        omega = np.clip(self._omega(wavelength_um), self.band.low, self.band.high)
 
-    def _direct(self, key: str, wavelength_um):
-        omega = self._omega(wavelength_um)
-        return _like(omega, self.functions[key](omega))
+        def derivative(key: str, order: int) -> Any:
+            if key == "beta":
+                return self.beta_rad_per_um(omega, order)
+            return self.functions[key](omega, order)
+
+        return _like(omega, FIGURES[name].of(omega, derivative))
 
     def variables(self) -> list[Variable]:
         """The curve as a table over the band, with error bars."""
@@ -251,9 +233,13 @@ class DispersionCurve(Result):
         wavelength = np.linspace(short, long, TABLE_POINTS)
         dims = ("wavelength_um",)
         out = [Variable("wavelength_um", wavelength, dims, "um", "vacuum wavelength", None)]
-        for key, (long_name, unit) in COLUMNS.items():
+        for key, figure in FIGURES.items():
             values = getattr(self, key)(wavelength)
-            out.append(Variable(key, values, dims, unit, long_name, self._bar(key, wavelength)))
+            out.append(
+                Variable(
+                    key, values, dims, figure.unit, figure.long_name, self._bar(key, wavelength)
+                )
+            )
         return out
 
 

@@ -28,7 +28,6 @@ from materials.common.errors import (
     NoGuidedMode,
     NotConverged,
     OutOfRange,
-    UnknownName,
 )
 from materials.common.results import (
     make_provenance,
@@ -36,19 +35,13 @@ from materials.common.results import (
 from modesolve.band import Band, BandFunction, leja_nodes
 from modesolve.cross_section import CrossSection
 from modesolve.curve import CurveReport, DispersionCurve
-from modesolve.layout import Layout
 from modesolve.maps import Margins
-from modesolve.mode import (
-    check_core,
-    checked_wavelength,
-    label_modes,
-    resolve_modes,
-    section_notes,
-)
+from modesolve.mode import section_notes
 from modesolve.refine import LADDER, Resolved, refine
-from modesolve.seeds import cutoff_index, find_seeds, near_cutoff
+from modesolve.scan import check_core, checked_wavelength, find_labelled
+from modesolve.seeds import cutoff_index, near_cutoff
 
-__all__ = ["dispersion", "find_mode"]
+__all__ = ["dispersion"]
 
 #: Fewest and most nodes of a curve.
 FEWEST_NODES, MOST_NODES = 3, 9
@@ -58,9 +51,6 @@ INTERPOLATION_SHARE = 0.5
 
 #: Points at which two interpolants are compared.
 CHECK_POINTS = 201
-
-#: Most modes searched for a label.
-MOST_MODES = 40
 
 
 def dispersion(
@@ -105,7 +95,8 @@ def dispersion(
     layout = section.layout()
     for end in (band.low, band.high):
         layout.permittivity(end, 0)  # a medium whose table ends inside the band speaks now
-    start = find_mode(section, layout, omega_from_um(reference), mode, ladder)
+    check_core(section, layout, omega_from_um(reference))
+    start = find_labelled(layout, omega_from_um(reference), mode, ladder)
     build = _Build(layout, band, start, ladder, progress)
     build.run()
     return build.curve(section, mode, reference, started)
@@ -118,40 +109,6 @@ def _checked_band(from_um: float, to_um: float) -> Band:
     if long / short < 1.0 + 1e-6:
         raise OutOfRange(f"band {short:g} to {long:g} um: the ends must differ; widen the band")
     return Band(omega_from_um(long), omega_from_um(short))
-
-
-def find_mode(
-    section: CrossSection, layout: Layout, omega: float, label: str, ladder: tuple[int, ...]
-) -> Resolved:
-    """The mode that carries ``label`` at ``omega``.
-
-    Raises
-    ------
-    UnknownName
-        When the text is no label.
-    NoGuidedMode
-        When no mode there carries it.
-    """
-    if label[:2] not in ("TE", "TM") or not label[2:].isdigit():
-        raise UnknownName(f"mode = {label!r}: give a label such as TE0, TM0 or TE1")
-    check_core(section, layout, omega)
-    seeds = find_seeds(layout, omega, MOST_MODES // 4, cutoff_index(layout, omega))
-    coarse = label_modes([s.te_fraction for s in seeds])
-    count = coarse.index(label) + 1 if label in coarse else len(seeds) + 1
-    labels: list[str] = []
-    while count <= MOST_MODES:
-        scan = resolve_modes(layout, omega, count, ladder)
-        labels = label_modes([float(r.values["te_fraction"][0]) for r in scan.modes])
-        if label in labels:
-            return scan.modes[labels.index(label)]
-        if len(scan.modes) < count:
-            break
-        count += 2
-    raise NoGuidedMode(
-        f"no guided mode {label} at {um_from_omega(omega):g} um: guided there "
-        f"{'are ' + ', '.join(labels) if labels else 'is none'}; "
-        "enlarge the core, shorten the wavelength or name another mode"
-    )
 
 
 class _Build:

@@ -3,22 +3,15 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Sequence
 from dataclasses import dataclass, field
+from functools import partial
 from typing import Any
 
 import numpy as np
 
-from materials.common import series
-from materials.common.constants import (
-    C_UM_PER_PS,
-    DB_PER_CM_PER_IM_BETA,
-    PER_UM_TO_PER_KM,
-    dispersion_from_beta2,
-    omega_from_um,
-    um_from_omega,
-)
-from materials.common.errors import NoGuidedMode, NotConverged, OutOfRange
+from materials.common import inputs
+from materials.common.constants import DB_PER_CM_PER_IM_BETA, omega_from_um, um_from_omega
+from materials.common.errors import NoGuidedMode
 from materials.common.results import (
     ErrorBars,
     Provenance,
@@ -30,17 +23,17 @@ from materials.common.results import (
 from modesolve.cross_section import CrossSection
 from modesolve.fields import FieldMap, field_map
 from modesolve.layout import Layout
-from modesolve.refine import LADDER, Resolved, SolveReport, refine
-from modesolve.seeds import cutoff_index, find_seeds, near_cutoff
+from modesolve.quantities import FIGURES, declared, evaluate
+from modesolve.refine import LADDER, Resolved, SolveReport
+from modesolve.scan import (
+    MOST_MODES,
+    check_core,
+    checked_wavelength,
+    find_labelled,
+    resolve_modes,
+)
 
-__all__ = ["Mode", "ModeScan", "label_modes", "resolve_modes", "solve_modes"]
-
-#: Wavelengths that make sense as micrometres.
-SHORTEST_UM, LONGEST_UM = 0.1, 100.0
-
-#: Modes whose coarse index lies within this of the last one wanted are resolved too,
-#: since the coarse grid may have put them in the wrong order.
-ORDER_SLACK = 0.02
+__all__ = ["Mode", "find_mode", "mode_from", "section_notes", "solve_modes"]
 
 
 @dataclass(frozen=True, slots=True, eq=False, repr=False, kw_only=True)
@@ -55,18 +48,18 @@ class Mode(Result):
 
     label: str = quantity("mode", "")
     wavelength_um: float = quantity("wavelength", "um")
-    n_eff: float = quantity("effective index", "1")
-    n_group: float = quantity("group index", "1")
-    beta2_ps2_per_km: float = quantity("group-velocity dispersion", "ps2/km")
-    beta3_ps3_per_km: float = quantity("third-order dispersion", "ps3/km")
-    beta4_ps4_per_km: float = quantity("fourth-order dispersion", "ps4/km")
-    dispersion_ps_per_nm_km: float = quantity("dispersion D", "ps/(nm km)")
-    te_fraction: float = quantity("TE fraction", "1")
-    core_power_fraction: float = quantity("power in the core", "1")
-    effective_area_um2: float = quantity("effective area", "um2")
-    intensity_area_um2: float = quantity("intensity-form area", "um2")
-    power_area_um2: float = quantity("power-form area", "um2")
-    gamma_per_w_m: float = quantity("nonlinear coefficient", "1/(W m)")
+    n_eff: float = declared("n_eff")
+    n_group: float = declared("n_group")
+    beta2_ps2_per_km: float = declared("beta2_ps2_per_km")
+    beta3_ps3_per_km: float = declared("beta3_ps3_per_km")
+    beta4_ps4_per_km: float = declared("beta4_ps4_per_km")
+    dispersion_ps_per_nm_km: float = declared("dispersion_ps_per_nm_km")
+    te_fraction: float = declared("te_fraction")
+    core_power_fraction: float = declared("core_power_fraction")
+    effective_area_um2: float = declared("effective_area_um2")
+    intensity_area_um2: float = declared("intensity_area_um2")
+    power_area_um2: float = declared("power_area_um2")
+    gamma_per_w_m: float = declared("gamma_per_w_m")
     loss_db_per_cm: float = quantity("loss", "dB/cm")
     n_group_from_energy: float = quantity("group index from the energy integrals", "1")
     medium: np.ndarray = quantity("medium", "", ("medium",))
@@ -87,64 +80,6 @@ class Mode(Result):
     def fields(self) -> FieldMap:
         """Electric field over the whole section, on the cell centres of the finest grid."""
         return self.field_map
-
-
-@dataclass(frozen=True, slots=True, eq=False)
-class ModeScan:
-    """Resolved modes of a layout in falling index, and why there are no more."""
-
-    modes: tuple[Resolved, ...]
-    notes: tuple[str, ...]
-
-
-def resolve_modes(
-    layout: Layout, omega: float, count: int, ladder: tuple[int, ...] = LADDER
-) -> ModeScan:
-    """The ``count`` highest guided modes of a layout.
-
-    Candidates of a coarse grid are climbed one by one; one that turns out not to be
-    guided is dropped with a note.
-    """
-    cutoff = cutoff_index(layout, omega)
-    seeds = find_seeds(layout, omega, count, cutoff)
-    modes: list[Resolved] = []
-    notes: list[str] = []
-    for seed in seeds:
-        if len(modes) >= count and seed.n_eff < _last(modes, count) - ORDER_SLACK:
-            break
-        try:
-            modes.append(refine(layout, omega, seed, ladder))
-        except NoGuidedMode as exc:
-            notes.append(str(exc))
-        except NotConverged as exc:
-            if not near_cutoff(layout, omega, seed.n_eff, cutoff):
-                raise
-            notes.append(f"a candidate near index {seed.n_eff:.4f} is a mode of the box: {exc}")
-    modes.sort(key=lambda r: -float(np.real(r.values["beta"][0])))
-    if len(modes) < count:
-        notes.insert(
-            0,
-            f"{len(modes)} guided mode(s) where {count} were asked for: no other has an index "
-            f"above the cut-off {cutoff:.6f}",
-        )
-        return ModeScan(tuple(modes), tuple(notes))
-    return ModeScan(tuple(modes[:count]), ())
-
-
-def _last(modes: Sequence[Resolved], count: int) -> float:
-    """Index of the last of the ``count`` best modes so far."""
-    return sorted((m.seed.n_eff for m in modes), reverse=True)[count - 1]
-
-
-def label_modes(te_fractions: Sequence[float]) -> list[str]:
-    """TE0, TM0, TE1 ... for modes in falling index; TE where te_fraction >= 0.5."""
-    counts = {"TE": 0, "TM": 0}
-    labels = []
-    for share in te_fractions:
-        kind = "TE" if share >= 0.5 else "TM"
-        labels.append(f"{kind}{counts[kind]}")
-        counts[kind] += 1
-    return labels
 
 
 def solve_modes(
@@ -188,50 +123,43 @@ def solve_modes(
     ('TE0', 1.834544)
     """
     wavelength_um = checked_wavelength(wavelength_um)
-    if isinstance(count, bool) or int(count) != count or not 1 <= count <= 200:
-        raise OutOfRange(f"count = {count}: allowed 1 to 200 modes")
+    count = inputs.whole("count", count, most=MOST_MODES)
     omega = omega_from_um(wavelength_um)
     layout = section.layout()
     check_core(section, layout, omega)
-    scan = resolve_modes(layout, omega, int(count), ladder)
+    scan = resolve_modes(layout, omega, count, ladder)
     if not scan.modes:
         raise NoGuidedMode(
             f"no guided mode at {wavelength_um:g} um: {'; '.join(scan.notes[1:]) or scan.notes[0]}"
             "; enlarge the core or shorten the wavelength"
         )
-    labels = label_modes([float(r.values["te_fraction"][0]) for r in scan.modes])
     return tuple(
         mode_from(section, layout, resolved, label, scan.notes)
-        for resolved, label in zip(scan.modes, labels, strict=True)
+        for resolved, label in zip(scan.modes, scan.labels, strict=True)
     )
 
 
-def checked_wavelength(wavelength_um: float, name: str = "wavelength_um") -> float:
-    """A wavelength as a float that makes sense in um."""
-    value = float(wavelength_um)
-    if not (math.isfinite(value) and SHORTEST_UM <= value <= LONGEST_UM):
-        raise OutOfRange(
-            f"{name} = {wavelength_um} um: allowed {SHORTEST_UM:g} to {LONGEST_UM:g} um; "
-            "check the unit"
-        )
-    return value
+def find_mode(
+    section: CrossSection,
+    wavelength_um: float,
+    label: str,
+    *,
+    ladder: tuple[int, ...] = LADDER,
+) -> Mode:
+    """The mode of a label, looking at as few modes as will do.
 
-
-def check_core(section: CrossSection, layout: Layout, omega: float) -> None:
-    """Refuse a section in which no film has a higher index than what surrounds it."""
-    n = layout.indices(omega)
-    around = max(section.cladding, section.substrate, key=lambda m: n[_position(section, m)])
-    outside = n[_position(section, around)]
-    if n.max() <= outside:
-        raise NoGuidedMode(
-            f"core {section.core.key} has index {n[layout.core]:.6f} at "
-            f"{um_from_omega(omega):g} um, not above {around.key} with {outside:.6f}: "
-            "nothing is guided; choose a core of higher index"
-        )
-
-
-def _position(section: CrossSection, medium: Any) -> int:
-    return next(i for i, m in enumerate(section.media) if m is medium)
+    Raises
+    ------
+    UnknownName
+        When the text is no label.
+    NoGuidedMode
+        When there is no such mode; the message lists those that there are.
+    """
+    omega = omega_from_um(checked_wavelength(wavelength_um))
+    layout = section.layout()
+    check_core(section, layout, omega)
+    resolved = find_labelled(layout, omega, label, ladder)
+    return mode_from(section, layout, resolved, label, ())
 
 
 def mode_from(
@@ -239,37 +167,37 @@ def mode_from(
 ) -> Mode:
     """The public result of a resolved mode."""
     wavelength = um_from_omega(resolved.omega)
-    names = list(_headline(resolved.omega, resolved.values))
+    group = np.array([medium.group_index(wavelength) for medium in layout.media])
 
-    def headline(values: dict[str, np.ndarray]) -> np.ndarray:
-        return np.array(list(_headline(resolved.omega, values).values()))
+    def figures(values: dict[str, np.ndarray]) -> np.ndarray:
+        found = evaluate(resolved.omega, partial(_derivative, values)).values()
+        return np.array([float(np.real(v)) for v in found])
 
     def weights(values: dict[str, np.ndarray]) -> np.ndarray:
         return np.array([values[f"weight_{i}"][0] for i in range(len(layout.media))])
 
-    value = dict(zip(names, headline(resolved.values).tolist(), strict=True))
-    bars = dict(zip(names, resolved.bar(headline).tolist(), strict=True))
-    group = np.array([m.group_index(wavelength) for m in layout.media])
     return Mode(
         label=label,
         wavelength_um=wavelength,
-        **value,
+        **dict(zip(FIGURES, figures(resolved.values).tolist(), strict=True)),
+        loss_db_per_cm=_loss(resolved.values),
         n_group_from_energy=float(group @ weights(resolved.values)),
-        medium=frozen_array([m.key for m in layout.media]),
+        medium=frozen_array([medium.key for medium in layout.media]),
         index_weight=frozen_array(weights(resolved.values)),
         beta_series=frozen_array(resolved.values["beta"]),
         section=section,
         field_map=field_map(layout, *resolved.finest, resolved.seed.boundary),
         report=resolved.report,
         error=ErrorBars(
-            bars,
+            dict(zip(FIGURES, resolved.bar(figures).tolist(), strict=True)),
             wavelength_um=0.0,
+            loss_db_per_cm=resolved.bar(_loss),
             index_weight=resolved.bar(weights),
-            n_group_from_energy=float(resolved.bar(lambda values: group @ weights(values))),
+            n_group_from_energy=resolved.bar(lambda values: group @ weights(values)),
         ),
         notes=(*notes, *section_notes(layout)),
         provenance=make_provenance(
-            [m.key for m in layout.media],
+            [medium.key for medium in layout.media],
             f"ladder {':'.join(map(str, resolved.report.ladder))}, "
             f"{resolved.report.unknowns} unknowns",
             seconds=resolved.report.seconds,
@@ -277,31 +205,14 @@ def mode_from(
     )
 
 
-def _headline(omega: float, values: dict[str, np.ndarray]) -> dict[str, float]:
-    """Trade quantities at the centre of the series."""
-    d = series.derivatives(np.real(values["beta"]))
-    beta2 = PER_UM_TO_PER_KM * d[2]
-    return {
-        "n_eff": C_UM_PER_PS * d[0] / omega,
-        "n_group": C_UM_PER_PS * d[1],
-        "beta2_ps2_per_km": beta2,
-        "beta3_ps3_per_km": PER_UM_TO_PER_KM * d[3],
-        "beta4_ps4_per_km": PER_UM_TO_PER_KM * d[4],
-        "dispersion_ps_per_nm_km": dispersion_from_beta2(beta2, um_from_omega(omega)),
-        "loss_db_per_cm": DB_PER_CM_PER_IM_BETA * float(np.imag(values["beta"][0])),
-        **{key: float(values[key][0]) for key in PLAIN},
-    }
+def _derivative(values: dict[str, np.ndarray], key: str, order: int) -> float:
+    """d^k/domega^k at the centre of a series."""
+    return math.factorial(order) * values[key][order]
 
 
-#: Quantities that are taken over as they are.
-PLAIN = (
-    "te_fraction",
-    "core_power_fraction",
-    "effective_area_um2",
-    "intensity_area_um2",
-    "power_area_um2",
-    "gamma_per_w_m",
-)
+def _loss(values: dict[str, np.ndarray]) -> float:
+    """Power loss in dB/cm: 2 Im(beta) as decibels."""
+    return DB_PER_CM_PER_IM_BETA * float(np.imag(values["beta"][0]))
 
 
 def section_notes(layout: Layout) -> tuple[str, ...]:

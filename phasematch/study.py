@@ -23,20 +23,19 @@ from materials.common.results import Provenance, make_provenance
 from modesolve.cross_section import CrossSection
 from modesolve.curve import DispersionCurve
 from modesolve.dispersion import dispersion
-from modesolve.mode import Mode, solve_modes
-from phasematch.channel import Channel
-from phasematch.channel_results import ChannelMap, ConversionBand, PairFlux
-from phasematch.design_file import Design
-from phasematch.mixing import LASER_CAUTION
-from phasematch.ring import Ring
-from phasematch.ring_results import DetuningMap, PairRates, PairTable, RingDispersion
-from phasematch.tables import (
+from modesolve.mode import Mode, find_mode, solve_modes
+from modesolve.tables import (
     DispersionTable,
     ModeTable,
     dispersion_table,
-    find_mode,
     mode_table,
 )
+from phasematch.caution import LASER_CAUTION
+from phasematch.channel import Channel
+from phasematch.channel_results import ChannelMap, ConversionBand, PairFlux
+from phasematch.design_file import Design
+from phasematch.ring import Ring
+from phasematch.ring_results import DetuningMap, PairRates, PairTable, RingDispersion
 
 Progress = Callable[[str], None]
 ResultType = TypeVar(

@@ -16,7 +16,7 @@ from materials.common.errors import (
 )
 from modesolve import CrossSection, dispersion, solve_modes
 from modesolve.band import Band, BandFunction, leja_nodes
-from modesolve.curve import COLUMNS
+from modesolve.quantities import FIGURES
 
 SILICA, NITRIDE = "SiO2-Malitson1965", "Si3N4-Luke2015"
 
@@ -46,7 +46,7 @@ def test_hermite_interpolation_converges_to_rounding():
 def test_curve_agrees_with_direct_solves_within_the_bars(curve):
     for wavelength in (1.231, 1.407, 1.613, 1.877):
         mode = solve_modes(nitride(), wavelength, 1)[0]
-        for key in COLUMNS:
+        for key in FIGURES:
             found, bar = getattr(curve, key)(wavelength), curve.error[key](wavelength)
             if key == "beta4_ps4_per_km" or not np.isfinite(getattr(mode, key)):
                 continue

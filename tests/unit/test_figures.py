@@ -9,10 +9,10 @@ from PIL import Image
 
 from materials.common.errors import StorageError
 from materials.common.results import ErrorBars
+from modesolve.tables import DispersionTable
 from phasematch import figures
 from phasematch.channel_results import ChannelMap
 from phasematch.ring_results import DetuningMap, PairTable
-from phasematch.tables import DispersionTable
 
 
 def dispersion_table():
@@ -27,6 +27,8 @@ def dispersion_table():
         n_group=2.1 * one,
         dispersion_ps_per_nm_km=d,
         beta2_ps2_per_km=-d,
+        beta3_ps3_per_km=one,
+        beta4_ps4_per_km=one,
         effective_area_um2=one,
         gamma_per_w_m=one,
         zero_dispersion_um=np.array([1.4 + np.sqrt(0.2)]),

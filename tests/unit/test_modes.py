@@ -13,7 +13,7 @@ import pytest
 import materials
 from materials.common.errors import NoGuidedMode, OutOfRange, OutsideMaterialRange
 from modesolve import CrossSection, solve_modes
-from modesolve.mode import label_modes
+from modesolve.scan import label_modes
 
 SILICA, NITRIDE = "SiO2-Malitson1965", "Si3N4-Luke2015"
 

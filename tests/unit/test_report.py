@@ -4,11 +4,11 @@ import numpy as np
 import pytest
 
 from materials.common.results import ErrorBars
+from modesolve.tables import DispersionTable, ModeTable
 from phasematch import report
+from phasematch.caution import LASER_CAUTION
 from phasematch.channel_results import ConversionBand, PairFlux
 from phasematch.design_tables import ChannelTable
-from phasematch.mixing import LASER_CAUTION
-from phasematch.tables import DispersionTable, ModeTable
 
 
 def mode_table():
@@ -46,8 +46,8 @@ def test_ranges(numbers, words):
 def test_zero_dispersion_with_its_bar():
     w = np.linspace(1.2, 2.0, 5)
     names = (
-        "n_eff", "n_group", "dispersion_ps_per_nm_km", "beta2_ps2_per_km", "effective_area_um2",
-        "gamma_per_w_m",
+        "n_eff", "n_group", "dispersion_ps_per_nm_km", "beta2_ps2_per_km", "beta3_ps3_per_km",
+        "beta4_ps4_per_km", "effective_area_um2", "gamma_per_w_m",
     )  # fmt: skip
     columns = dict.fromkeys(names, np.ones(5))
     table = DispersionTable(

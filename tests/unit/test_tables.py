@@ -5,7 +5,8 @@ import pytest
 
 import modesolve
 from materials.common.errors import NoGuidedMode, OutOfRange
-from phasematch.tables import beta_table, dispersion_table, find_mode, mode_table, taper_table
+from modesolve.mode import find_mode
+from modesolve.tables import beta_table, dispersion_table, mode_table, taper_table
 
 SECTION = modesolve.CrossSection(
     core="Si3N4-Luke2015",
@@ -80,5 +81,5 @@ def test_taper_rises_with_width_and_keeps_its_reasons():
 
 def test_find_mode_names_what_there_is():
     assert find_mode(SECTION, 1.55, "TM0").label == "TM0"
-    with pytest.raises(NoGuidedMode, match=r"no mode TE1 at 3.5 um: guided"):
+    with pytest.raises(NoGuidedMode, match=r"no guided mode TE1 at 3.5 um: guided"):
         find_mode(SECTION, 3.5, "TE1")

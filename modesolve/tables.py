@@ -8,8 +8,9 @@ from typing import Any
 
 import numpy as np
 
+from materials.common.alternates import error_bar
 from materials.common.constants import PER_UM_TO_PER_KM, omega_from_um
-from materials.common.errors import NoGuidedMode, OutOfRange, SolverError
+from materials.common.errors import NoGuidedMode, SolverError
 from materials.common.results import (
     ErrorBars,
     Provenance,
@@ -20,8 +21,8 @@ from materials.common.results import (
 )
 from modesolve.cross_section import CrossSection
 from modesolve.curve import DispersionCurve
-from modesolve.mode import Mode, solve_modes
-from phasematch.mixing import error_bar
+from modesolve.mode import Mode, find_mode
+from modesolve.quantities import declared
 
 _AXIS = ("wavelength_um",)
 
@@ -32,16 +33,16 @@ class ModeTable(Result):
 
     wavelength_um: float = quantity("wavelength", "um")
     mode: np.ndarray = quantity("mode", "", ("mode",))
-    n_eff: np.ndarray = quantity("effective index", "1", ("mode",))
-    dispersion_ps_per_nm_km: np.ndarray = quantity("dispersion D", "ps/(nm km)", ("mode",))
-    gamma_per_w_m: np.ndarray = quantity("nonlinear coefficient", "1/(W m)", ("mode",))
-    effective_area_um2: np.ndarray = quantity("effective area", "um2", ("mode",))
+    n_eff: np.ndarray = declared("n_eff", ("mode",))
+    dispersion_ps_per_nm_km: np.ndarray = declared("dispersion_ps_per_nm_km", ("mode",))
+    gamma_per_w_m: np.ndarray = declared("gamma_per_w_m", ("mode",))
+    effective_area_um2: np.ndarray = declared("effective_area_um2", ("mode",))
     loss_db_per_cm: np.ndarray = quantity("loss", "dB/cm", ("mode",))
-    n_group: np.ndarray = quantity("group index", "1", ("mode",))
-    beta2_ps2_per_km: np.ndarray = quantity("group-velocity dispersion", "ps2/km", ("mode",))
-    beta3_ps3_per_km: np.ndarray = quantity("third-order dispersion", "ps3/km", ("mode",))
-    beta4_ps4_per_km: np.ndarray = quantity("fourth-order dispersion", "ps4/km", ("mode",))
-    te_fraction: np.ndarray = quantity("TE fraction", "1", ("mode",))
+    n_group: np.ndarray = declared("n_group", ("mode",))
+    beta2_ps2_per_km: np.ndarray = declared("beta2_ps2_per_km", ("mode",))
+    beta3_ps3_per_km: np.ndarray = declared("beta3_ps3_per_km", ("mode",))
+    beta4_ps4_per_km: np.ndarray = declared("beta4_ps4_per_km", ("mode",))
+    te_fraction: np.ndarray = declared("te_fraction", ("mode",))
     error: ErrorBars = field(default_factory=ErrorBars)
     inputs: Mapping[str, Any] = field(default_factory=dict)
     notes: tuple[str, ...] = ()
@@ -68,12 +69,14 @@ class DispersionTable(Result):
 
     mode: str = quantity("mode", "")
     wavelength_um: np.ndarray = quantity("wavelength", "um", _AXIS)
-    n_eff: np.ndarray = quantity("effective index", "1", _AXIS)
-    n_group: np.ndarray = quantity("group index", "1", _AXIS)
-    dispersion_ps_per_nm_km: np.ndarray = quantity("dispersion D", "ps/(nm km)", _AXIS)
-    beta2_ps2_per_km: np.ndarray = quantity("group-velocity dispersion", "ps2/km", _AXIS)
-    effective_area_um2: np.ndarray = quantity("effective area", "um2", _AXIS)
-    gamma_per_w_m: np.ndarray = quantity("nonlinear coefficient", "1/(W m)", _AXIS)
+    n_eff: np.ndarray = declared("n_eff", _AXIS)
+    n_group: np.ndarray = declared("n_group", _AXIS)
+    dispersion_ps_per_nm_km: np.ndarray = declared("dispersion_ps_per_nm_km", _AXIS)
+    beta2_ps2_per_km: np.ndarray = declared("beta2_ps2_per_km", _AXIS)
+    beta3_ps3_per_km: np.ndarray = declared("beta3_ps3_per_km", _AXIS)
+    beta4_ps4_per_km: np.ndarray = declared("beta4_ps4_per_km", _AXIS)
+    effective_area_um2: np.ndarray = declared("effective_area_um2", _AXIS)
+    gamma_per_w_m: np.ndarray = declared("gamma_per_w_m", _AXIS)
     zero_dispersion_um: np.ndarray = quantity(
         "zero-dispersion wavelength", "um", ("zero_crossing",)
     )
@@ -83,12 +86,14 @@ class DispersionTable(Result):
     provenance: Provenance | None = None
 
 
-#: Methods of a curve that become columns.
-COLUMNS = (
+#: Figures of a curve that become columns.
+CURVE_COLUMNS = (
     "n_eff",
     "n_group",
     "dispersion_ps_per_nm_km",
     "beta2_ps2_per_km",
+    "beta3_ps3_per_km",
+    "beta4_ps4_per_km",
     "effective_area_um2",
     "gamma_per_w_m",
 )
@@ -108,24 +113,19 @@ def dispersion_table(
         What the curve was made from, for the header.
     """
     w = frozen_array(wavelength_um, float)
-    values = {name: frozen_array(getattr(curve, name)(w)) for name in COLUMNS}
-    bars = {name: np.asarray(curve.error[name](w)) for name in COLUMNS}
+    values = {name: frozen_array(getattr(curve, name)(w)) for name in CURVE_COLUMNS}
+    bars = {name: np.asarray(curve.error[name](w)) for name in CURVE_COLUMNS}
     zeros = frozen_array(np.atleast_1d(curve.zero_dispersion_um()))
     return DispersionTable(
         mode=curve.mode,
         wavelength_um=w,
         **values,
         zero_dispersion_um=zeros,
-        error=ErrorBars(bars, zero_dispersion_um=_zero_bars(curve)),
+        error=ErrorBars(bars, zero_dispersion_um=curve.error["zero_dispersion_um"]()),
         inputs=inputs or {},
         notes=tuple(curve.notes),
         provenance=curve.provenance,
     )
-
-
-def _zero_bars(curve: DispersionCurve) -> np.ndarray:
-    bars = curve.error["zero_dispersion_um"]
-    return np.atleast_1d(np.asarray(bars() if callable(bars) else bars, dtype=float))
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -168,7 +168,7 @@ def beta_table(
         pump_um=float(pump_um),
         order=frozen_array(np.arange(orders + 1)),
         beta=frozen_array(betas(curve)),
-        error=ErrorBars(beta=np.asarray(error_bar(curve, betas))),
+        error=ErrorBars(beta=error_bar(betas, curve, curve.alternates)),
         inputs=inputs or {},
         notes=tuple(curve.notes),
         provenance=curve.provenance,
@@ -186,9 +186,9 @@ class TaperTable(Result):
     mode: str = quantity("mode", "")
     wavelength_um: float = quantity("wavelength", "um")
     width_um: np.ndarray = quantity("core width", "um", ("width_um",))
-    n_eff: np.ndarray = quantity("effective index", "1", ("width_um",))
-    n_group: np.ndarray = quantity("group index", "1", ("width_um",))
-    effective_area_um2: np.ndarray = quantity("effective area", "um2", ("width_um",))
+    n_eff: np.ndarray = declared("n_eff", ("width_um",))
+    n_group: np.ndarray = declared("n_group", ("width_um",))
+    effective_area_um2: np.ndarray = declared("effective_area_um2", ("width_um",))
     reason: np.ndarray = quantity("why there is no value", "", ("width_um",))
     error: ErrorBars = field(default_factory=ErrorBars)
     inputs: Mapping[str, Any] = field(default_factory=dict)
@@ -262,28 +262,3 @@ def taper_table(
         notes=tuple(notes),
         provenance=provenance,
     )
-
-
-def find_mode(section: CrossSection, wavelength_um: float, label: str) -> Mode:
-    """The mode of a label, looking at as few modes as will do.
-
-    Raises
-    ------
-    NoGuidedMode
-        There is no such mode; the message lists those that there are.
-    """
-    count = 2 * int(label[2:]) + 2
-    while True:
-        modes = solve_modes(section, wavelength_um, count)
-        for mode in modes:
-            if mode.label == label:
-                return mode
-        if len(modes) < count:
-            labels = ", ".join(mode.label for mode in modes)
-            raise NoGuidedMode(
-                f"no mode {label} at {wavelength_um:g} um: guided are {labels}; choose one of "
-                "them or change the cross-section"
-            )
-        if count >= 80:
-            raise OutOfRange(f"mode {label}: not among the first {count} modes; choose a lower one")
-        count *= 2
