@@ -13,9 +13,10 @@ Neither click nor Matplotlib is loaded by importing this package.
 """
 
 import phasematch.guard  # noqa: F401 - first: it looks for hidden packages
+from phasematch.caution import LASER_CAUTION
 from phasematch.channel import Channel
 from phasematch.channel_results import ChannelMap, ConversionBand, PairFlux
-from phasematch.mixing import LASER_CAUTION, Curve, error_bar
+from phasematch.curve_protocol import Curve, error_bar
 from phasematch.ring import Ring
 from phasematch.ring_results import (
     DetuningMap,

@@ -9,11 +9,12 @@ first order vanishes by symmetry. Derived here and held against numerical bent s
 from __future__ import annotations
 
 import math
-from typing import Any
 
 import numpy as np
 
-from materials.common.constants import TWO_PI
+from materials.common.constants import TWO_PI, middle_um
+from modesolve.cross_section import CrossSection
+from phasematch.curve_protocol import Curve
 
 #: <x^2> of a cos^2 profile over its width squared.
 _SPREAD = 1.0 / 12.0 - 1.0 / (2.0 * math.pi**2)
@@ -44,20 +45,19 @@ def bend_shift(
     return n_eff * (2.0 * (n_eff * k0) ** 2 * spread**2 - 1.5 * spread) / radius_um**2
 
 
-def bend_note(curve: Any, radius_um: float) -> tuple[str, ...]:
+def bend_note(curve: Curve, radius_um: float) -> tuple[str, ...]:
     """A note with the estimated shift, or none when the curve is that of the ring's radius."""
     solved = curve.bend_radius_um
     if solved is not None and math.isclose(solved, radius_um, rel_tol=1e-9):
         return ()
     what = "a straight guide" if solved is None else f"a bend of {solved:g} um"
     start = f"the curve is that of {what}, the ring bends to {radius_um:g} um: "
-    section = getattr(curve, "section", None)
-    width = getattr(section, "width_um", None)
-    if width is None or curve.mode.lstrip("TEM") != "0":
-        why = "its core width is not known" if width is None else f"{curve.mode} has nodes"
+    section = curve.section
+    if section is None or curve.mode.lstrip("TEM") != "0":
+        why = "its core width is not known" if section is None else f"{curve.mode} has nodes"
         return (start + f"the shift goes as 1/R^2 and is not estimated here ({why})",)
     short, long = curve.band_um
-    at = 2.0 * short * long / (short + long)  # the middle of the band in frequency
+    at = middle_um(short, long)
     shift = _difference(curve, section, at, solved, radius_um)
     return (
         start + f"n_eff would shift by about {shift:+.1g} at {at:.4g} um (second order in 1/R, "
@@ -66,7 +66,9 @@ def bend_note(curve: Any, radius_um: float) -> tuple[str, ...]:
     )
 
 
-def _difference(curve: Any, section: Any, at: float, solved: float | None, radius: float) -> float:
+def _difference(
+    curve: Curve, section: CrossSection, at: float, solved: float | None, radius: float
+) -> float:
     n_eff, cladding = float(curve.n_eff(at)), float(np.real(section.cladding.index(at)))
     there = bend_shift(n_eff, at, section.width_um, cladding, radius)
     here = 0.0 if solved is None else bend_shift(n_eff, at, section.width_um, cladding, solved)

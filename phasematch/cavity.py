@@ -22,9 +22,7 @@ from typing import Any
 
 import numpy as np
 
-from materials.common.constants import C_UM_PER_PS, HBAR_W_PS2
-
-_PER_UM = 1e-6  # 1/(W m) in 1/(W um)
+from materials.common.constants import C_UM_PER_PS, HBAR_W_PS2, PER_M_TO_PER_UM
 
 
 def build_up(
@@ -53,7 +51,7 @@ def kerr_shift_per_photon(
 ) -> Any:
     """Shift g = gamma v_g^2 hbar omega/L of the pump line for each of its photons, rad/ps."""
     speed = C_UM_PER_PS / n_group
-    return gamma_per_w_m * _PER_UM * speed**2 * HBAR_W_PS2 * omega_rad_per_ps / length_um
+    return gamma_per_w_m * PER_M_TO_PER_UM * speed**2 * HBAR_W_PS2 * omega_rad_per_ps / length_um
 
 
 def pair_rate_inside(
@@ -144,18 +142,5 @@ def stimulated_idler_w(
     hot resonance; ``frequency_ratio`` is omega_i/omega_s.
     """
     pump, signal, idler = build_ups
-    turn = gamma_per_w_m * _PER_UM * length_um * pump_w
+    turn = gamma_per_w_m * PER_M_TO_PER_UM * length_um * pump_w
     return frequency_ratio * np.square(turn * pump) * signal_w * signal * idler
-
-
-def spontaneous_idler_w(
-    gamma_per_w_m: Any, length_um: Any, pump_w: Any, build_up_: Any, omega: Any, n_group: Any
-) -> Any:
-    """Spontaneous power of one arm in the bus, aligned, equal widths, low gain.
-
-    (gamma L)^2 B^3 (hbar omega v_g/(2 L)) P^2: the vacuum acts as a seed of half a photon's
-    energy per round trip, lengthened by the build-up.
-    """
-    speed = C_UM_PER_PS / n_group
-    seed = HBAR_W_PS2 * omega * speed / (2.0 * length_um)
-    return np.square(gamma_per_w_m * _PER_UM * length_um * pump_w) * build_up_**3 * seed

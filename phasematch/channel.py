@@ -17,19 +17,21 @@ from typing import Any
 import numpy as np
 
 from materials.common import inputs
-from materials.common.constants import omega_from_um
+from materials.common.constants import DB_PER_E_FOLD, TWO_PI, omega_from_um
 from materials.common.errors import InputError
 from materials.common.results import ErrorBars, frozen_array
 from phasematch import mixing
+from phasematch.caution import LASER_CAUTION
 from phasematch.channel_results import ChannelMap, ConversionBand, PairFlux
 from phasematch.conversion import BandEdges, find_band
-from phasematch.mixing import LASER_CAUTION, Curve, error_bar
-from phasematch.pairs import SignalRange, beyond_note, integrate_flux, signal_range
+from phasematch.curve_protocol import Curve, error_bar, gamma_or_nan, snap, values_with_bars
+from phasematch.pair_flux import SignalRange, beyond_note, integrate_flux, signal_range
+from phasematch.reasons import GAMMA_UNKNOWN
 from phasematch.waves import Waves, density, log_photons, mix, photons, reasons, weak
+from phasematch.weak_mixing import weak_photons_m2
 
 __all__ = ["Channel"]
 
-_DB = 10.0 / math.log(10.0)
 _WEAK = 0.1  # gamma P L above which the weak-pump forms get a note
 
 
@@ -69,7 +71,7 @@ class Channel:
     @property
     def loss_per_m(self) -> float:
         """Power loss alpha in 1/m."""
-        return self.loss_db_per_cm * 100.0 / _DB
+        return self.loss_db_per_cm * 100.0 / DB_PER_E_FOLD
 
     @property
     def effective_length_mm(self) -> float:
@@ -219,30 +221,25 @@ class Channel:
         _check_counted(counted)
         span = self._range(pump_um, signal_band_um, idler_band_um)
         flux, quadrature = self._flux(pump_um, pump_w, span, counted)
-        bar = error_bar(
-            self.curve,
-            lambda c: replace(self, curve=c)._flux(pump_um, pump_w, span, counted)[0],
-        )
+        bar = error_bar(self.curve, lambda c: self._on(c)._flux(pump_um, pump_w, span, counted)[0])
         filters = {"signal_band_um": signal_band_um, "idler_band_um": idler_band_um}
         notes = self.validity_notes(pump_um, pump_w)
         if span.empty:
             notes += ("no pair passes both filters: photon energy is conserved",)
         if signal_band_um is None and idler_band_um is None and not span.reason:
             notes += beyond_note(self._spectrum(pump_um, pump_w, counted), span, flux)
-        reason = span.reason or ("" if np.isfinite(flux) else "gamma not known")
+        reason = span.reason or ("" if np.isfinite(flux) else GAMMA_UNKNOWN)
         return PairFlux(
             pump_um=pump_um,
             pump_w=pump_w,
             counted=counted if self.loss_db_per_cm else "pairs",
             flux_per_s=flux,
             quadrature_error_per_s=quadrature,
-            low_thz=span.low / (2 * math.pi),
-            high_thz=span.high / (2 * math.pi),
+            low_thz=span.low / TWO_PI,
+            high_thz=span.high / TWO_PI,
             reason=reason,
             error=ErrorBars(flux_per_s=float(bar) + quadrature),
-            inputs={**self._inputs(), **filters},
-            notes=notes,
-            provenance=getattr(self.curve, "provenance", None),
+            **self._about(notes, **filters),
         )
 
     def conversion_band(
@@ -274,22 +271,20 @@ class Channel:
         pump_w = inputs.number("pump_w", pump_w, "W", least=True)
         drop = inputs.number("-level_db", -float(level_db), "dB")
         edges = self._band(pump_um, pump_w, drop)
-        bars = error_bar(
-            self.curve, lambda c: replace(self, curve=c)._band(pump_um, pump_w, drop).numbers()
+        values, bars = values_with_bars(
+            self.curve,
+            BandEdges.names,
+            lambda c: self._on(c)._band(pump_um, pump_w, drop).numbers(),
         )
-        values = edges.numbers()
-        names = BandEdges.names
         return ConversionBand(
             pump_um=pump_um,
             pump_w=pump_w,
             level_db=-drop,
-            **dict(zip(names, values.tolist(), strict=True)),
+            **values,
             contains_pump=bool(edges.low < omega_from_um(pump_um) < edges.high),
             reason=edges.reason,
-            error=ErrorBars(dict(zip(names, bars.tolist(), strict=True))),
-            inputs=self._inputs(),
-            notes=self.validity_notes(pump_um, pump_w) + edges.notes,
-            provenance=getattr(self.curve, "provenance", None),
+            error=ErrorBars(bars),
+            **self._about(self.validity_notes(pump_um, pump_w) + edges.notes),
         )
 
     def map(self, pump_um: Any, signal_um: Any, pump_w: float) -> ChannelMap:
@@ -317,26 +312,21 @@ class Channel:
         if pumps.ndim != 1 or signals.ndim != 1:
             raise InputError("pump_um and signal_um of a map must be one-dimensional arrays")
         pump_w = inputs.number("pump_w", pump_w, "W", least=True)
-
-        def stack(curve: Curve) -> np.ndarray:
-            return replace(self, curve=curve)._stacked(pumps[:, None], signals, pump_w)
-
-        values = stack(self.curve)
-        bars = error_bar(self.curve, stack)
+        values, bars = values_with_bars(
+            self.curve,
+            ("mismatch_per_m", "gain_db", "efficiency_db"),
+            lambda c: self._on(c)._stacked(pumps[:, None], signals, pump_w),
+        )
         waves = self._waves(pumps[:, None], signals, pump_w)
-        names = ("mismatch_per_m", "gain_db", "efficiency_db")
-        arrays = {name: frozen_array(v) for name, v in zip(names, values, strict=True)}
         return ChannelMap(
             pump_um=frozen_array(pumps),
             signal_um=frozen_array(signals),
             idler_um=frozen_array(mixing.idler_um(pumps[:, None], signals)),
-            **arrays,
+            **values,
             reason=frozen_array(reasons(self.curve, waves)),
             pump_w=pump_w,
-            error=ErrorBars(dict(zip(names, bars, strict=True))),
-            inputs=self._inputs(),
-            notes=self.validity_notes(pumps, pump_w),
-            provenance=getattr(self.curve, "provenance", None),
+            error=ErrorBars(bars),
+            **self._about(self.validity_notes(pumps, pump_w)),
         )
 
     def validity_notes(self, pump_um: Any, pump_w: Any) -> tuple[str, ...]:
@@ -345,7 +335,7 @@ class Channel:
         power = float(np.max(pump_w))
         if power == 0.0:
             return tuple(notes)
-        gamma = mixing.gamma_or_nan(self.curve, pump_um)
+        gamma = gamma_or_nan(self.curve, pump_um)
         phase = power * self.effective_length_mm * 1e-3
         phase *= float(np.max(gamma, initial=0.0, where=np.isfinite(gamma)))
         if self.loss_db_per_cm and phase > _WEAK:
@@ -357,15 +347,20 @@ class Channel:
 
     # ------------------------------------------------------------ the work
 
-    def _inputs(self) -> dict[str, Any]:
+    def _on(self, curve: Curve) -> Channel:
+        return replace(self, curve=curve)
+
+    def _about(self, notes: tuple[str, ...], **more: Any) -> dict[str, Any]:
+        """Fields that every result of the channel has."""
         given = {"mode": self.curve.mode, "length_mm": self.length_mm}
-        return {**given, "loss_db_per_cm": self.loss_db_per_cm}
+        inputs = {**given, "loss_db_per_cm": self.loss_db_per_cm, **more}
+        return {"inputs": inputs, "notes": notes, "provenance": self.curve.provenance}
 
     def _waves(self, pump_um: Any, signal_um: Any, pump_w: Any) -> Waves:
         pump_um = inputs.numbers("pump_um", pump_um, "um")
         signal_um = inputs.numbers("signal_um", signal_um, "um")
         power = inputs.numbers("pump_w", pump_w, "W", zero_allowed=True)
-        gamma = mixing.gamma_or_nan(self.curve, pump_um)
+        gamma = gamma_or_nan(self.curve, pump_um)
         return mix(self.curve, omega_from_um(pump_um), omega_from_um(signal_um), gamma, power)
 
     def _stacked(self, pump_um: Any, signal_um: Any, pump_w: float) -> np.ndarray:
@@ -373,8 +368,8 @@ class Channel:
         waves = self._waves(pump_um, signal_um, pump_w)
         made = log_photons(waves, self.loss_per_m, self.length_m)
         with np.errstate(invalid="ignore"):  # NaN stays NaN
-            gain = _DB * np.logaddexp(-self.loss_per_m * self.length_m, made)
-        efficiency = _DB * (made + np.log(waves.idler / waves.signal))
+            gain = DB_PER_E_FOLD * np.logaddexp(-self.loss_per_m * self.length_m, made)
+        efficiency = DB_PER_E_FOLD * (made + np.log(waves.idler / waves.signal))
         efficiency = np.where(np.isfinite(efficiency), efficiency, np.nan)
         return np.stack([waves.kappa_per_m, gain, efficiency])
 
@@ -382,8 +377,8 @@ class Channel:
         self, pump_um: float, pump_w: float, counted: str
     ) -> Callable[[np.ndarray], tuple[np.ndarray, np.ndarray]]:
         """Density of pairs and phase kappa L/2 against the signal frequency."""
-        pump = float(mixing.snap(self.curve, omega_from_um(pump_um)))
-        gamma = mixing.gamma_or_nan(self.curve, pump_um)
+        pump = float(snap(self.curve, omega_from_um(pump_um)))
+        gamma = gamma_or_nan(self.curve, pump_um)
         power = np.asarray(pump_w)
 
         def spectrum(signal: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
@@ -404,21 +399,21 @@ class Channel:
         return integrate_flux(self._spectrum(pump_um, pump_w, counted), span)
 
     def _band(self, pump_um: float, pump_w: float, drop_db: float) -> BandEdges:
-        gamma = mixing.gamma_or_nan(self.curve, pump_um)
-        pump = float(mixing.snap(self.curve, omega_from_um(pump_um)))
+        gamma = gamma_or_nan(self.curve, pump_um)
+        pump = float(snap(self.curve, omega_from_um(pump_um)))
         power = np.asarray(pump_w)
 
         def log_efficiency(signal: Any) -> tuple[np.ndarray, np.ndarray]:
             waves = mix(self.curve, pump, np.asarray(signal, dtype=float), gamma, power)
             if pump_w == 0.0:
-                shape = mixing.weak_photons_m2(waves.dbeta_per_m, self.loss_per_m, self.length_m)
+                shape = weak_photons_m2(waves.dbeta_per_m, self.loss_per_m, self.length_m)
                 with np.errstate(divide="ignore"):
                     level = np.log(shape.stimulated) + 2.0 * np.log(waves.idler / pump)
             else:
                 level = log_photons(waves, self.loss_per_m, self.length_m) + np.log(
                     waves.idler / waves.signal
                 )
-            return _DB * level, 0.5 * self.length_m * waves.kappa_per_m
+            return DB_PER_E_FOLD * level, 0.5 * self.length_m * waves.kappa_per_m
 
         return find_band(self.curve, pump, log_efficiency, drop_db, absolute=pump_w > 0.0)
 

@@ -2,19 +2,17 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
-from dataclasses import dataclass, field
-from typing import Any
+from dataclasses import dataclass
 
 import numpy as np
 
-from materials.common.results import ErrorBars, Provenance, Result, quantity
+from materials.common.results import FullResult, quantity
 
 _MAP = ("pump_um", "signal_um")
 
 
 @dataclass(frozen=True, slots=True, eq=False)
-class ChannelMap(Result):
+class ChannelMap(FullResult):
     """Mixing in a channel for every pump and every signal wavelength.
 
     Arrays of shape (pumps, signals); where a point has no value it is NaN and ``reason``
@@ -29,14 +27,10 @@ class ChannelMap(Result):
     efficiency_db: np.ndarray = quantity("idler out over signal in", "dB", _MAP)
     reason: np.ndarray = quantity("why there is no value", "", _MAP)
     pump_w: float = quantity("pump power at the input", "W")
-    error: ErrorBars = field(default_factory=ErrorBars)
-    inputs: Mapping[str, Any] = field(default_factory=dict)
-    notes: tuple[str, ...] = ()
-    provenance: Provenance | None = None
 
 
 @dataclass(frozen=True, slots=True, eq=False)
-class ConversionBand(Result):
+class ConversionBand(FullResult):
     """The signal band about the most efficient signal in which the efficiency stays high.
 
     An edge is NaN where the efficiency does not fall far enough inside the solved band;
@@ -55,14 +49,10 @@ class ConversionBand(Result):
     width_thz: float = quantity("width", "THz")
     contains_pump: bool = quantity("the pump lies within the band", "")
     reason: str = quantity("why an edge is missing", "")
-    error: ErrorBars = field(default_factory=ErrorBars)
-    inputs: Mapping[str, Any] = field(default_factory=dict)
-    notes: tuple[str, ...] = ()
-    provenance: Provenance | None = None
 
 
 @dataclass(frozen=True, slots=True, eq=False)
-class PairFlux(Result):
+class PairFlux(FullResult):
     """Photon pairs per second from a channel, signals on one side of the pump.
 
     ``low_thz`` to ``high_thz`` are the signal frequencies that were integrated over.
@@ -76,7 +66,3 @@ class PairFlux(Result):
     low_thz: float = quantity("lowest signal frequency", "THz")
     high_thz: float = quantity("highest signal frequency", "THz")
     reason: str = quantity("why there is no value", "")
-    error: ErrorBars = field(default_factory=ErrorBars)
-    inputs: Mapping[str, Any] = field(default_factory=dict)
-    notes: tuple[str, ...] = ()
-    provenance: Provenance | None = None

@@ -46,7 +46,7 @@ def progress() -> Iterator[Callable[[str], None]]:
 
 def notes(lines: Any) -> None:
     """Notes of a result on stderr, once each; the caution about pump powers on stdout."""
-    from phasematch.mixing import LASER_CAUTION
+    from phasematch.caution import LASER_CAUTION
     from phasematch.report import notes_lines
 
     for line in notes_lines(lines):

@@ -11,8 +11,9 @@ import numpy as np
 from scipy.optimize import brentq, minimize_scalar
 
 from materials.common.constants import TWO_PI, um_from_omega
-from phasematch.mixing import Curve, inside
+from phasematch.curve_protocol import Curve, inside
 from phasematch.quadrature import phase_nodes
+from phasematch.reasons import GAMMA_UNKNOWN, OUTSIDE_BAND
 
 #: Signal frequencies -> (efficiency in dB, phase kappa L/2 in rad).
 Levels = Callable[[Any], tuple[np.ndarray, np.ndarray]]
@@ -71,15 +72,15 @@ def find_band(
     """
     nan = math.nan
     if not inside(curve, pump_rad_per_ps):
-        return BandEdges(nan, nan, nan, nan, "pump outside the solved band")
+        return BandEdges(nan, nan, nan, nan, f"pump {OUTSIDE_BAND}")
     low, high = curve.band_rad_per_ps
     low, high = max(low, 2 * pump_rad_per_ps - high), min(high, 2 * pump_rad_per_ps - low)
     if not high > low:
-        return BandEdges(nan, nan, nan, nan, "the pump lies at the edge of the solved band")
+        return BandEdges(nan, nan, nan, nan, f"every signal or idler {OUTSIDE_BAND}")
     points = phase_nodes(lambda w: levels(w)[1], low, high, math.pi / 16, cells=256)
     values = levels(points)[0]
     if not np.isfinite(values).any():
-        return BandEdges(nan, nan, nan, nan, "gamma not known")
+        return BandEdges(nan, nan, nan, nan, GAMMA_UNKNOWN)
     top = _climbed(values, int(np.argmin(np.abs(points - pump_rad_per_ps))))
     peak, peak_db = _refined(levels, points, values, top)
     level = peak_db - drop_db
@@ -96,7 +97,7 @@ def find_band(
     reason = ""
     if missing:
         reason = (
-            f"{' and '.join(missing)} edge outside the solved band: the efficiency falls by "
+            f"{' and '.join(missing)} edge {OUTSIDE_BAND}: the efficiency falls by "
             f"less than {drop_db:g} dB there"
         )
     notes: list[str] = []

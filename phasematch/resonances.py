@@ -15,7 +15,7 @@ from typing import Any
 import numpy as np
 
 from materials.common.errors import NotConverged, SolverError
-from phasematch.mixing import Curve
+from phasematch.curve_protocol import Curve
 
 _GUESS_POINTS = 129
 _MOST_PASSES = 30

@@ -9,18 +9,25 @@ factors are taken the same for all lines.
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass, field, replace
+from dataclasses import dataclass, field
 from typing import Any
 
 import numpy as np
 
 from materials.common import inputs
-from materials.common.constants import C_UM_PER_PS, TWO_PI, omega_from_um, um_from_omega
+from materials.common.constants import (
+    C_UM_PER_PS,
+    RAD_PER_PS_TO_MHZ,
+    TWO_PI,
+    omega_from_um,
+    um_from_omega,
+)
 from materials.common.errors import OutOfRange
 from materials.common.results import ErrorBars, frozen_array
 from phasematch import cavity, ring_power
 from phasematch.bend_note import bend_note
-from phasematch.mixing import Curve, error_bar, inside, snap
+from phasematch.curve_protocol import Curve, error_bar, inside, snap, values_with_bars
+from phasematch.reasons import outside_or_good
 from phasematch.resonances import Lines, find_lines, order_range, ring_dispersion
 from phasematch.ring_results import (
     DetuningMap,
@@ -33,8 +40,6 @@ from phasematch.ring_results import (
 )
 
 __all__ = ["Ring"]
-
-_MHZ = 1e6 / TWO_PI  # rad/ps in MHz
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -91,6 +96,16 @@ class Ring:
         """Notes of the curve, and of its bend radius where it is not the ring's."""
         return (*self.curve.notes, *bend_note(self.curve, self.radius_um))
 
+    def about(self, **more: Any) -> dict[str, Any]:
+        """Inputs, notes and provenance of every result of the ring; ``more`` are inputs."""
+        given = {"mode": self.curve.mode, "radius_um": self.radius_um}
+        quality = {"q_intrinsic": self.q_intrinsic, "q_coupling": self.q_coupling}
+        return {
+            "inputs": {**given, **quality, **more},
+            "notes": self.notes,
+            "provenance": self.curve.provenance,
+        }
+
     def fsr_ghz(self, wavelength_um: Any) -> Any:
         """Free spectral range c/(n_g L), GHz; raises `OutOfRange` outside the band."""
         n_group = np.asarray(self.curve.n_group(wavelength_um))
@@ -99,7 +114,7 @@ class Ring:
     def linewidth_mhz(self, wavelength_um: Any) -> Any:
         """Loaded linewidth, full width at half maximum, MHz."""
         omega = omega_from_um(inputs.numbers("wavelength_um", wavelength_um, "um"))
-        return (omega / self.q_loaded * _MHZ)[()]
+        return (omega / self.q_loaded * RAD_PER_PS_TO_MHZ)[()]
 
     def finesse(self, wavelength_um: Any) -> Any:
         """Free spectral range over linewidth."""
@@ -108,12 +123,25 @@ class Ring:
     def build_up(self, wavelength_um: Any, detuning_mhz: Any = 0.0) -> Any:
         """Circulating power over bus power at a detuning from a resonance."""
         omega = omega_from_um(inputs.numbers("wavelength_um", wavelength_um, "um"))
-        detuning = np.asarray(detuning_mhz, dtype=float) / _MHZ
+        detuning = np.asarray(detuning_mhz, dtype=float) / RAD_PER_PS_TO_MHZ
         n_group = np.asarray(self.curve.n_group(wavelength_um))
         width, coupling = omega / self.q_loaded, omega / self.q_coupling
         return cavity.build_up(n_group, self.length_um, width, coupling, detuning)[()]
 
     # ------------------------------------------------------------ cold resonances
+
+    def pump_order(self, pump_um: float) -> int:
+        """Azimuthal order of the resonance nearest to a pump wavelength.
+
+        Raises
+        ------
+        OutOfRange
+            When the pump lies outside the band.
+        """
+        omega = self._in_band("pump_um", pump_um)
+        orders = self._orders(None, None)
+        nearest = round(self.radius_um * float(self.curve.beta_rad_per_um(omega)))
+        return int(min(max(nearest, orders[0]), orders[-1]))
 
     def resonances(self, short_um: float | None = None, long_um: float | None = None) -> Resonances:
         """All resonances between two wavelengths (by default in the solved band).
@@ -124,7 +152,6 @@ class Ring:
             For wavelengths outside the band.
         """
         order = self._orders(short_um, long_um)
-        lines = self._lines(order)
 
         def stack(curve: Curve) -> np.ndarray:
             around = find_lines(
@@ -134,17 +161,13 @@ class Ring:
             up, down = np.r_[1:n, n + 1], np.r_[n, 0 : n - 1]
             spacing = 0.5e3 / TWO_PI * around.apart(up, down)
             omega = around.omega_rad_per_ps[:n]
-            return np.stack([omega / TWO_PI, um_from_omega(omega), spacing])
+            width = RAD_PER_PS_TO_MHZ * omega / self.q_loaded
+            return np.stack([omega / TWO_PI, um_from_omega(omega), spacing, width])
 
-        values, names = stack(self.curve), ("frequency_thz", "wavelength_um", "fsr_ghz")
-        bars = error_bar(self.curve, stack)
-        columns: dict[str, Any] = {n: frozen_array(v) for n, v in zip(names, values, strict=True)}
+        names = ("frequency_thz", "wavelength_um", "fsr_ghz", "linewidth_mhz")
+        values, bars = values_with_bars(self.curve, names, stack)
         return Resonances(
-            order=frozen_array(order),
-            **columns,
-            linewidth_mhz=frozen_array(lines.omega_rad_per_ps / self.q_loaded * _MHZ),
-            error=ErrorBars(dict(zip(names, bars, strict=True))),
-            **self._about(),
+            order=frozen_array(order), **values, error=ErrorBars(bars), **self.about()
         )
 
     def dispersion_coefficients(self, pump_um: float) -> RingDispersion:
@@ -155,18 +178,20 @@ class Ring:
         OutOfRange
             When the pump lies outside the band.
         """
-        order = self._pump_order(pump_um)
-        names = ("d1_ghz", "d2_mhz", "d3_khz", "d4_khz")
+        order = self.pump_order(pump_um)
         scale = np.array([1e3, 1e6, 1e9, 1e9]) / TWO_PI
-        values = scale * self._coefficients(self.curve, order)
-        bars = error_bar(self.curve, lambda c: scale * self._coefficients(c, order))
+        values, bars = values_with_bars(
+            self.curve,
+            ("d1_ghz", "d2_mhz", "d3_khz", "d4_khz"),
+            lambda c: scale * self._coefficients(c, order),
+        )
         pump, pump_bars = self._pump(order)
         return RingDispersion(
             pump_order=order,
-            pump_um=pump[0],
-            **dict(zip(names, values.tolist(), strict=True)),
-            error=ErrorBars(dict(zip(names, bars.tolist(), strict=True)), pump_um=pump_bars[0]),
-            **self._about(pump_um=pump_um),
+            pump_um=pump["pump_um"],
+            **values,
+            error=ErrorBars(bars, pump_um=pump_bars["pump_um"]),
+            **self.about(pump_um=pump_um),
         )
 
     def integrated_dispersion(self, pump_um: float, count: int) -> IntegratedDispersion:
@@ -177,26 +202,29 @@ class Ring:
         OutOfRange
             When the pump lies outside the band or ``count`` is not positive.
         """
-        order, count = self._pump_order(pump_um), inputs.whole("count", count, most=100_000)
+        order, count = self.pump_order(pump_um), inputs.whole("count", count, most=100_000)
         mu = np.arange(-count, count + 1)
 
         def integrated(curve: Curve) -> np.ndarray:
             lines = find_lines(curve, self.radius_um, order + mu)
             d1 = self._coefficients(curve, order)[0]
-            return _MHZ * (lines.apart(slice(None), count) - d1 * mu)
+            return RAD_PER_PS_TO_MHZ * (lines.apart(slice(None), count) - d1 * mu)
 
         lines = self._lines(order + mu)
         pump, pump_bars = self._pump(order)
-        bars = {"integrated_mhz": error_bar(self.curve, integrated), "pump_um": pump_bars[0]}
+        bars = {
+            "integrated_mhz": error_bar(self.curve, integrated),
+            "pump_um": pump_bars["pump_um"],
+        }
         return IntegratedDispersion(
             mu=frozen_array(mu),
             frequency_thz=frozen_array(lines.omega_rad_per_ps / TWO_PI),
             integrated_mhz=frozen_array(integrated(self.curve)),
-            reason=frozen_array(_beyond(np.isfinite(lines.omega_rad_per_ps))),
+            reason=frozen_array(outside_or_good(np.isfinite(lines.omega_rad_per_ps))),
             pump_order=order,
-            pump_um=pump[0],
+            pump_um=pump["pump_um"],
             error=ErrorBars(bars),
-            **self._about(pump_um=pump_um),
+            **self.about(pump_um=pump_um),
         )
 
     def pairs(self, pump_um: float, count: int) -> PairTable:
@@ -220,37 +248,36 @@ class Ring:
         OutOfRange
             When the pump lies outside the band or ``count`` is not positive.
         """
-        order, count = self._pump_order(pump_um), inputs.whole("count", count, most=100_000)
+        order, count = self.pump_order(pump_um), inputs.whole("count", count, most=100_000)
         mu = np.arange(1, count + 1)
         around = np.arange(order - count, order + count + 1)
-        names = ("misalignment_mhz", "signal_thz", "idler_thz", "signal_um", "idler_um")
+        names = (
+            "misalignment_mhz", "misalignment_linewidths", "linewidth_mhz",
+            "signal_thz", "idler_thz", "signal_um", "idler_um",
+        )  # fmt: skip
 
         def stack(curve: Curve) -> np.ndarray:
             lines = find_lines(curve, self.radius_um, around)
             up, down = lines.omega_rad_per_ps[count + mu], lines.omega_rad_per_ps[count - mu]
-            miss = _MHZ * lines.misaligned(count, mu)
+            miss = RAD_PER_PS_TO_MHZ * lines.misaligned(count, mu)
+            width = 0.5 * RAD_PER_PS_TO_MHZ * (up + down) / self.q_loaded
             thz = [up / TWO_PI, down / TWO_PI]
-            return np.stack([miss, *thz, um_from_omega(up), um_from_omega(down)])
+            return np.stack(
+                [miss, miss / width, width, *thz, um_from_omega(up), um_from_omega(down)]
+            )
 
-        values = dict(zip(names, stack(self.curve), strict=True))
-        bars = dict(zip(names, error_bar(self.curve, stack), strict=True))
-        width = 0.5e6 * (values["signal_thz"] + values["idler_thz"]) / self.q_loaded
+        values, bars = values_with_bars(self.curve, names, stack)
         miss = values["misalignment_mhz"]
-        bars["misalignment_linewidths"] = bars["misalignment_mhz"] / width
         pump, pump_bars = self._pump(order)
-        columns: dict[str, Any] = {name: frozen_array(v) for name, v in values.items()}
         return PairTable(
             mu=frozen_array(mu),
-            **columns,
-            misalignment_linewidths=frozen_array(miss / width),
-            linewidth_mhz=frozen_array(width),
-            aligned=frozen_array(np.abs(miss) <= width),
-            reason=frozen_array(_beyond(np.isfinite(miss))),
+            **values,
+            aligned=frozen_array(np.abs(miss) <= values["linewidth_mhz"]),
+            reason=frozen_array(outside_or_good(np.isfinite(miss))),
             pump_order=order,
-            pump_um=pump[0],
-            pump_thz=pump[1],
-            error=ErrorBars({**bars, "pump_um": pump_bars[0], "pump_thz": pump_bars[1]}),
-            **self._about(pump_um=pump_um),
+            **pump,
+            error=ErrorBars({**bars, **pump_bars}),
+            **self.about(pump_um=pump_um),
         )
 
     def detuning_map(
@@ -285,23 +312,31 @@ class Ring:
         around = np.arange(pumps[0] - count, pumps[-1] + count + 1)
         centre = (pumps - around[0])[:, None]
 
-        def missed(curve: Curve) -> np.ndarray:
-            return _MHZ * find_lines(curve, self.radius_um, around).misaligned(centre, mu)
+        def stack(curve: Curve) -> np.ndarray:
+            lines = find_lines(curve, self.radius_um, around)
+            omega = lines.omega_rad_per_ps
+            miss = RAD_PER_PS_TO_MHZ * lines.misaligned(centre, mu)
+            both = omega[centre + mu] + omega[centre - mu]
+            width = 0.5 * RAD_PER_PS_TO_MHZ * both / self.q_loaded
+            return np.stack([miss, miss / width, width])
 
-        omega = self._lines(around).omega_rad_per_ps
-        width = 0.5 * (omega[centre + mu] + omega[centre - mu]) / self.q_loaded * _MHZ
-        miss, bar = missed(self.curve), error_bar(self.curve, missed)
+        def pump(curve: Curve) -> np.ndarray:
+            omega = find_lines(curve, self.radius_um, pumps).omega_rad_per_ps
+            return um_from_omega(omega)[None]
+
+        names = ("misalignment_mhz", "misalignment_linewidths", "linewidth_mhz")
+        values, bars = values_with_bars(self.curve, names, stack)
+        pump_um, pump_bars = values_with_bars(self.curve, ("pump_um",), pump)
+        miss = values["misalignment_mhz"]
         return DetuningMap(
             pump_order=frozen_array(pumps),
             mu=frozen_array(mu),
-            pump_um=frozen_array(um_from_omega(omega[centre[:, 0]])),
-            misalignment_mhz=frozen_array(miss),
-            linewidth_mhz=frozen_array(width),
-            misalignment_linewidths=frozen_array(miss / width),
-            aligned=frozen_array(np.abs(miss) <= width),
-            reason=frozen_array(_beyond(np.isfinite(miss))),
-            error=ErrorBars(misalignment_mhz=bar, misalignment_linewidths=bar / width),
-            **self._about(),
+            **pump_um,
+            **values,
+            aligned=frozen_array(np.abs(miss) <= values["linewidth_mhz"]),
+            reason=frozen_array(outside_or_good(np.isfinite(miss))),
+            error=ErrorBars({**bars, **pump_bars}),
+            **self.about(),
         )
 
     # ------------------------------------------------------------ with light in it
@@ -371,19 +406,6 @@ class Ring:
 
     # ------------------------------------------------------------ the work
 
-    def _with(self, curve: Curve) -> Ring:
-        return replace(self, curve=curve)
-
-    def _about(self, **more: Any) -> dict[str, Any]:
-        """Fields that every result of the ring has."""
-        given = {"mode": self.curve.mode, "radius_um": self.radius_um}
-        quality = {"q_intrinsic": self.q_intrinsic, "q_coupling": self.q_coupling}
-        return {
-            "inputs": {**given, **quality, **more},
-            "notes": self.notes,
-            "provenance": getattr(self.curve, "provenance", None),
-        }
-
     def _lines(self, order: Any) -> Lines:
         return find_lines(self.curve, self.radius_um, order)
 
@@ -416,29 +438,17 @@ class Ring:
             )
         return np.arange(low, high + 1)
 
-    def _pump_order(self, pump_um: float) -> int:
-        """Order of the resonance nearest to a pump wavelength."""
-        omega = self._in_band("pump_um", pump_um)
-        orders = self._orders(None, None)
-        nearest = round(self.radius_um * float(self.curve.beta_rad_per_um(omega)))
-        return int(min(max(nearest, orders[0]), orders[-1]))
-
-    def _pump(self, order: int) -> tuple[list[float], list[float]]:
+    def _pump(self, order: int) -> tuple[dict[str, float], dict[str, float]]:
         """Wavelength in um and frequency in THz of a resonance, and their error bars."""
 
         def both(curve: Curve) -> np.ndarray:
             omega = find_lines(curve, self.radius_um, [order]).omega_rad_per_ps[0]
             return np.array([um_from_omega(omega), omega / TWO_PI])
 
-        return both(self.curve).tolist(), error_bar(self.curve, both).tolist()
+        return values_with_bars(self.curve, ("pump_um", "pump_thz"), both)
 
     def _coefficients(self, curve: Curve, order: int) -> np.ndarray:
         """D1 .. D4 in rad/ps about a resonance."""
         omega = find_lines(curve, self.radius_um, [order]).omega_rad_per_ps[0]
         betas = [float(curve.beta_rad_per_um(omega, k)) for k in (1, 2, 3, 4)]
         return ring_dispersion(betas, self.radius_um)
-
-
-def _beyond(good: np.ndarray) -> np.ndarray:
-    """Reasons of missing pairs or lines."""
-    return np.where(good, "", "beyond the solved band")

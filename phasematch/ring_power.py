@@ -6,23 +6,29 @@ others by -2gN, so the hot misalignment is delta = delta_mu - 2gN.
 
 from __future__ import annotations
 
+from dataclasses import replace
 from typing import TYPE_CHECKING, Any, NamedTuple
 
 import numpy as np
 
 from materials.common import inputs
-from materials.common.constants import C_UM_PER_PS, TWO_PI, um_from_omega
+from materials.common.constants import (
+    C_UM_PER_PS,
+    PER_PS_TO_PER_S,
+    RAD_PER_PS_TO_MHZ,
+    um_from_omega,
+)
 from materials.common.results import ErrorBars, frozen_array
 from phasematch import cavity
-from phasematch.mixing import LASER_CAUTION, Curve, error_bar, gamma_or_nan
+from phasematch.caution import LASER_CAUTION
+from phasematch.curve_protocol import Curve, gamma_or_nan, values_with_bars
+from phasematch.reasons import GAMMA_UNKNOWN, OUTSIDE_BAND
 from phasematch.resonances import find_lines, order_range
 from phasematch.ring_results import PairRates, StimulatedIdler
 
 if TYPE_CHECKING:
     from phasematch.ring import Ring
 
-_MHZ = 1e6 / TWO_PI  # rad/ps in MHz
-_PER_S = 1e12
 _HIGH = 0.1  # x above which low-gain forms get a note
 
 
@@ -48,7 +54,7 @@ def heat_up(ring: Ring, order: int, pump_w: float, count: int, kerr_shift: bool)
     """Photons inside, Kerr shift, hot misalignment and threshold fraction of each pair."""
     curve = ring.curve
     low, high = order_range(curve, ring.radius_um)
-    # threshold is looked for among all pairs of the band, not only those asked for
+    # threshold is looked for among all pairs of the band, not only those listed
     most = max(count, min(order - low, high - order))
     mu = np.arange(1, most + 1)
     lines = find_lines(curve, ring.radius_um, np.arange(order - most, order + most + 1))
@@ -68,11 +74,24 @@ def heat_up(ring: Ring, order: int, pump_w: float, count: int, kerr_shift: bool)
     return Hot(pump, gamma, n_group, photons, gain, first, *arrays)
 
 
+#: What `_resonances` gives.
+_RESONANCES = (
+    "misalignment_mhz", "hot_misalignment_mhz", "linewidth_mhz", "signal_um", "idler_um",
+)  # fmt: skip
+
+
+def _resonances(hot: Hot) -> list[np.ndarray]:
+    """Cold and hot misalignment and linewidth in MHz, cold wavelengths in um, of each pair."""
+    width = 0.5 * (hot.width_s + hot.width_i)
+    mhz = [RAD_PER_PS_TO_MHZ * rate for rate in (hot.cold, hot.delta, width)]
+    return [*mhz, um_from_omega(hot.signal), um_from_omega(hot.idler)]
+
+
 def _rates(ring: Ring, hot: Hot) -> np.ndarray:
     """Made inside, singles of each arm, coincidences (1/s); x; threshold in W; shape (6, n)."""
     below = np.nan if hot.oscillating else 1.0
     weak = cavity.pair_rate_inside(hot.gain, hot.width_s, hot.width_i, hot.delta)
-    made = _PER_S * below * weak / np.where(hot.x < 1.0, 1.0 - hot.x, np.nan)
+    made = PER_PS_TO_PER_S * below * weak / np.where(hot.x < 1.0, 1.0 - hot.x, np.nan)
     escape = ring.escape_fraction
     photons = cavity.threshold_gain(hot.width_s, hot.width_i, hot.cold)
     photons = photons / cavity.kerr_shift_per_photon(
@@ -93,8 +112,8 @@ def _reasons(hot: Hot) -> np.ndarray:
     return np.select(
         [beyond, unknown, own, another],
         [
-            "beyond the solved band",
-            "gamma not known",
+            OUTSIDE_BAND,
+            GAMMA_UNKNOWN,
             "at or above the threshold of oscillation",
             f"the ring oscillates at this power (pair {hot.oscillating})",
         ],
@@ -118,17 +137,19 @@ def spontaneous(
     """See `Ring.spontaneous`."""
     pump_w = inputs.number("pump_w", pump_w, "W", least=True)
     count = inputs.whole("count", count, most=100_000)
-    order = ring._pump_order(pump_um)
+    order = ring.pump_order(pump_um)
 
     def numbers(curve: Curve) -> np.ndarray:
-        other = ring._with(curve)
+        other = replace(ring, curve=curve)
         now = heat_up(other, order, pump_w, count, kerr_shift)
-        return np.vstack([_rates(other, now), _MHZ * now.cold, _MHZ * now.delta])
+        return np.vstack([_rates(other, now), *_resonances(now)])
 
     def of_the_pump(curve: Curve) -> np.ndarray:
-        other = ring._with(curve)
+        other = replace(ring, curve=curve)
         now = heat_up(other, order, pump_w, count, kerr_shift)
-        return np.array([now.photons, other.build_up(um_from_omega(now.pump)), _MHZ * now.gain])
+        pump_um = um_from_omega(now.pump)
+        shift = RAD_PER_PS_TO_MHZ * now.gain
+        return np.array([pump_um, now.photons, other.build_up(pump_um), shift])
 
     hot = heat_up(ring, order, pump_w, count, kerr_shift)
     names = (
@@ -138,26 +159,18 @@ def spontaneous(
         "coincidences_per_s",
         "threshold_fraction",
         "threshold_w",
-        "misalignment_mhz",
-        "hot_misalignment_mhz",
+        *_RESONANCES,
     )
-    values, bars = numbers(ring.curve), error_bar(ring.curve, numbers)
-    pump = ("photons_inside", "build_up", "kerr_shift_mhz")
-    pump_bars = zip(pump, error_bar(ring.curve, of_the_pump).tolist(), strict=True)
-    columns: dict[str, Any] = {n: frozen_array(v) for n, v in zip(names, values, strict=True)}
+    values, bars = values_with_bars(ring.curve, names, numbers)
+    pump = ("pump_um", "photons_inside", "build_up", "kerr_shift_mhz")
+    at_pump, pump_bars = values_with_bars(ring.curve, pump, of_the_pump)
     return PairRates(
         mu=frozen_array(np.arange(1, count + 1)),
-        **columns,
-        linewidth_mhz=frozen_array(0.5 * _MHZ * (hot.width_s + hot.width_i)),
-        signal_um=frozen_array(um_from_omega(hot.signal)),
-        idler_um=frozen_array(um_from_omega(hot.idler)),
+        **values,
         reason=frozen_array(_reasons(hot)),
-        pump_um=um_from_omega(hot.pump),
         pump_w=pump_w,
-        photons_inside=hot.photons,
-        build_up=float(ring.build_up(um_from_omega(hot.pump))),
-        kerr_shift_mhz=_MHZ * hot.gain,
-        error=ErrorBars({**dict(zip(names, bars, strict=True)), **dict(pump_bars)}),
+        **at_pump,
+        error=ErrorBars({**bars, **pump_bars}),
         **_about(ring, hot, pump_um, kerr_shift, "coincidences"),
     )
 
@@ -175,34 +188,46 @@ def stimulated(
     pump_w = inputs.number("pump_w", pump_w, "W", least=True)
     signal_w = inputs.number("signal_w", signal_w, "W", least=True)
     count = inputs.whole("count", count, most=100_000)
-    seed = inputs.number("signal_detuning_mhz", signal_detuning_mhz, "MHz", above=-1e12) / _MHZ
-    order = ring._pump_order(pump_um)
+    seed_mhz = inputs.number("signal_detuning_mhz", signal_detuning_mhz, "MHz", above=-1e12)
+    seed = seed_mhz / RAD_PER_PS_TO_MHZ
+    order = ring.pump_order(pump_um)
 
-    def power(curve: Curve) -> np.ndarray:
-        other = ring._with(curve)
-        return _idler_w(
-            other, heat_up(other, order, pump_w, count, kerr_shift), pump_w, signal_w, seed
-        )
+    per_w = np.nan if signal_w == 0.0 else 1.0 / signal_w
+
+    def numbers(curve: Curve) -> np.ndarray:
+        other = replace(ring, curve=curve)
+        now = heat_up(other, order, pump_w, count, kerr_shift)
+        idler_w = _idler_w(other, now, pump_w, signal_w, seed)
+        detuning = -RAD_PER_PS_TO_MHZ * (now.delta + seed)
+        cold, hot, _, *um = _resonances(now)
+        return np.vstack([idler_w, idler_w * per_w, now.x, detuning, cold, hot, *um])
+
+    def pump(curve: Curve) -> np.ndarray:
+        omega = find_lines(curve, ring.radius_um, [order]).omega_rad_per_ps
+        return um_from_omega(omega)
 
     hot = heat_up(ring, order, pump_w, count, kerr_shift)
-    idler_w, bar = power(ring.curve), error_bar(ring.curve, power)
-    per_w = np.nan if signal_w == 0.0 else 1.0 / signal_w
+    names = (
+        "idler_w",
+        "efficiency",
+        "threshold_fraction",
+        "idler_detuning_mhz",
+        "misalignment_mhz",
+        "hot_misalignment_mhz",
+        "signal_um",
+        "idler_um",
+    )
+    values, bars = values_with_bars(ring.curve, names, numbers)
+    at_pump, pump_bars = values_with_bars(ring.curve, ("pump_um",), pump)
     return StimulatedIdler(
         mu=frozen_array(np.arange(1, count + 1)),
-        idler_w=frozen_array(idler_w),
-        efficiency=frozen_array(idler_w * per_w),
-        threshold_fraction=frozen_array(hot.x),
-        idler_detuning_mhz=frozen_array(-_MHZ * (hot.delta + seed)),
-        misalignment_mhz=frozen_array(_MHZ * hot.cold),
-        hot_misalignment_mhz=frozen_array(_MHZ * hot.delta),
-        signal_um=frozen_array(um_from_omega(hot.signal)),
-        idler_um=frozen_array(um_from_omega(hot.idler)),
+        **values,
         reason=frozen_array(_reasons(hot)),
-        pump_um=um_from_omega(hot.pump),
+        **at_pump,
         pump_w=pump_w,
         signal_w=signal_w,
-        signal_detuning_mhz=seed * _MHZ,
-        error=ErrorBars(idler_w=bar, efficiency=bar * per_w),
+        signal_detuning_mhz=seed_mhz,
+        error=ErrorBars({**bars, **pump_bars}),
         **_about(ring, hot, pump_um, kerr_shift, "idler powers"),
     )
 
@@ -228,6 +253,6 @@ def _idler_w(ring: Ring, hot: Hot, pump_w: float, signal_w: float, seed: float) 
 
 
 def _about(ring: Ring, hot: Hot, pump_um: float, kerr_shift: bool, low_gain: str) -> dict[str, Any]:
-    about = ring._about(pump_um=pump_um, kerr_shift=kerr_shift)
+    about = ring.about(pump_um=pump_um, kerr_shift=kerr_shift)
     about["notes"] = _notes(ring, hot, low_gain)
     return about

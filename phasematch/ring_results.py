@@ -2,13 +2,11 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
-from dataclasses import dataclass, field
-from typing import Any
+from dataclasses import dataclass
 
 import numpy as np
 
-from materials.common.results import ErrorBars, Provenance, Result, quantity
+from materials.common.results import FullResult, quantity
 
 _MU = ("mu",)
 _ORDER = ("order",)
@@ -16,7 +14,7 @@ _DETUNING = ("pump_order", "mu")
 
 
 @dataclass(frozen=True, slots=True, eq=False)
-class Resonances(Result):
+class Resonances(FullResult):
     """All resonances of a ring within a band."""
 
     order: np.ndarray = quantity("azimuthal order", "1", _ORDER)
@@ -24,14 +22,10 @@ class Resonances(Result):
     wavelength_um: np.ndarray = quantity("wavelength", "um", _ORDER)
     fsr_ghz: np.ndarray = quantity("half the distance of the two neighbours", "GHz", _ORDER)
     linewidth_mhz: np.ndarray = quantity("loaded linewidth", "MHz", _ORDER)
-    error: ErrorBars = field(default_factory=ErrorBars)
-    inputs: Mapping[str, Any] = field(default_factory=dict)
-    notes: tuple[str, ...] = ()
-    provenance: Provenance | None = None
 
 
 @dataclass(frozen=True, slots=True, eq=False)
-class RingDispersion(Result):
+class RingDispersion(FullResult):
     """D_k = d^k omega/d mu^k about a resonance, exact derivatives, over 2 pi."""
 
     pump_order: int = quantity("azimuthal order of the pump", "1")
@@ -40,14 +34,10 @@ class RingDispersion(Result):
     d2_mhz: float = quantity("D2/2pi", "MHz")
     d3_khz: float = quantity("D3/2pi", "kHz")
     d4_khz: float = quantity("D4/2pi", "kHz")
-    error: ErrorBars = field(default_factory=ErrorBars)
-    inputs: Mapping[str, Any] = field(default_factory=dict)
-    notes: tuple[str, ...] = ()
-    provenance: Provenance | None = None
 
 
 @dataclass(frozen=True, slots=True, eq=False)
-class IntegratedDispersion(Result):
+class IntegratedDispersion(FullResult):
     """D_int = omega_mu - omega_0 - D1 mu over 2 pi, mu = -count .. count."""
 
     mu: np.ndarray = quantity("mode number from the pump", "1", _MU)
@@ -56,14 +46,10 @@ class IntegratedDispersion(Result):
     reason: np.ndarray = quantity("why there is no value", "", _MU)
     pump_order: int = quantity("azimuthal order of the pump", "1")
     pump_um: float = quantity("wavelength of the pump resonance", "um")
-    error: ErrorBars = field(default_factory=ErrorBars)
-    inputs: Mapping[str, Any] = field(default_factory=dict)
-    notes: tuple[str, ...] = ()
-    provenance: Provenance | None = None
 
 
 @dataclass(frozen=True, slots=True, eq=False)
-class PairTable(Result):
+class PairTable(FullResult):
     """Cold resonance pairs around a pump: by how much they miss, and whether they align.
 
     ``aligned`` where |misalignment| <= linewidth, the half-rate point. Pairs beyond the
@@ -83,10 +69,6 @@ class PairTable(Result):
     pump_order: int = quantity("azimuthal order of the pump", "1")
     pump_um: float = quantity("wavelength of the pump resonance", "um")
     pump_thz: float = quantity("frequency of the pump resonance", "THz")
-    error: ErrorBars = field(default_factory=ErrorBars)
-    inputs: Mapping[str, Any] = field(default_factory=dict)
-    notes: tuple[str, ...] = ()
-    provenance: Provenance | None = None
 
     @property
     def misalignment_error_mhz(self) -> np.ndarray:
@@ -95,7 +77,7 @@ class PairTable(Result):
 
 
 @dataclass(frozen=True, slots=True, eq=False)
-class DetuningMap(Result):
+class DetuningMap(FullResult):
     """Cold misalignment for every pump resonance of a band and every pair about it."""
 
     pump_order: np.ndarray = quantity("azimuthal order of the pump", "1", ("pump_order",))
@@ -108,14 +90,10 @@ class DetuningMap(Result):
     )
     aligned: np.ndarray = quantity("misses by at most a linewidth", "", _DETUNING)
     reason: np.ndarray = quantity("why there is no value", "", _DETUNING)
-    error: ErrorBars = field(default_factory=ErrorBars)
-    inputs: Mapping[str, Any] = field(default_factory=dict)
-    notes: tuple[str, ...] = ()
-    provenance: Provenance | None = None
 
 
 @dataclass(frozen=True, slots=True, eq=False)
-class PairRates(Result):
+class PairRates(FullResult):
     """Spontaneous pairs of a pumped ring, one row a pair of resonances.
 
     ``threshold_fraction`` is x; where any pair reaches x = 1 the ring oscillates and all
@@ -141,14 +119,10 @@ class PairRates(Result):
     photons_inside: float = quantity("pump photons in the ring", "1")
     build_up: float = quantity("intensity build-up of the pump", "1")
     kerr_shift_mhz: float = quantity("shift gN of the pump line, downwards", "MHz")
-    error: ErrorBars = field(default_factory=ErrorBars)
-    inputs: Mapping[str, Any] = field(default_factory=dict)
-    notes: tuple[str, ...] = ()
-    provenance: Provenance | None = None
 
 
 @dataclass(frozen=True, slots=True, eq=False)
-class StimulatedIdler(Result):
+class StimulatedIdler(FullResult):
     """Idler power of a pumped ring with a seed in the signal resonance, one row a pair."""
 
     mu: np.ndarray = quantity("pair index", "1", _MU)
@@ -165,7 +139,3 @@ class StimulatedIdler(Result):
     pump_w: float = quantity("pump power in the bus", "W")
     signal_w: float = quantity("signal power in the bus", "W")
     signal_detuning_mhz: float = quantity("signal from its hot resonance", "MHz")
-    error: ErrorBars = field(default_factory=ErrorBars)
-    inputs: Mapping[str, Any] = field(default_factory=dict)
-    notes: tuple[str, ...] = ()
-    provenance: Provenance | None = None

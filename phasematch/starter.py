@@ -6,9 +6,9 @@ import textwrap
 
 from pydantic.fields import FieldInfo
 
+from phasematch.caution import LASER_CAUTION
 from phasematch.design_file import toml_value
 from phasematch.design_tables import TABLES, allowed
-from phasematch.mixing import LASER_CAUTION
 
 #: Values of the keys that have no default: a thick-nitride ring and the channel of its bus.
 _EXAMPLE = {

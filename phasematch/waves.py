@@ -7,7 +7,9 @@ from typing import Any, NamedTuple
 import numpy as np
 
 from phasematch import mixing
-from phasematch.mixing import Curve
+from phasematch.curve_protocol import Curve, inside
+from phasematch.reasons import GAMMA_UNKNOWN, OUTSIDE_BAND
+from phasematch.weak_mixing import WeakPhotons, weak_photons_m2
 
 
 class Waves(NamedTuple):
@@ -50,11 +52,11 @@ def mix(curve: Curve, pump: Any, signal: Any, gamma: Any, power: Any) -> Waves:
     return Waves(pump, signal, idler, dbeta, kappa, gamma_s, gamma_i, power)
 
 
-def weak(waves: Waves, loss_per_m: float, length_m: float) -> mixing.WeakPhotons:
+def weak(waves: Waves, loss_per_m: float, length_m: float) -> WeakPhotons:
     """Photon numbers of a weak pump with equal loss."""
-    shape = mixing.weak_photons_m2(waves.dbeta_per_m, loss_per_m, length_m)
+    shape = weak_photons_m2(waves.dbeta_per_m, loss_per_m, length_m)
     front = waves.gamma_signal * waves.gamma_idler * np.square(waves.pump_w)
-    return mixing.WeakPhotons(*(front * part for part in shape))
+    return WeakPhotons(*(front * part for part in shape))
 
 
 def photons(waves: Waves, loss_per_m: float, length_m: float) -> np.ndarray:
@@ -87,9 +89,9 @@ def density(waves: Waves, loss_per_m: float, length_m: float, counted: str) -> n
 def reasons(curve: Curve, waves: Waves) -> np.ndarray:
     """Why a point of a map is not there, "" where it is."""
     shape = waves.dbeta_per_m.shape
-    pump = np.broadcast_to(mixing.inside(curve, waves.pump), shape)
-    signal = np.broadcast_to(mixing.inside(curve, waves.signal), shape)
-    idler = mixing.inside(curve, waves.idler)
+    pump = np.broadcast_to(inside(curve, waves.pump), shape)
+    signal = np.broadcast_to(inside(curve, waves.signal), shape)
+    idler = inside(curve, waves.idler)
     gamma = np.broadcast_to(np.isfinite(waves.gamma_signal), shape)
     return np.select(
         [
@@ -101,11 +103,11 @@ def reasons(curve: Curve, waves: Waves) -> np.ndarray:
             np.broadcast_to(waves.pump_w == 0.0, shape),
         ],
         [
-            "pump outside the solved band",
-            "signal outside the solved band",
-            "no idler: the signal has more than twice the pump's frequency",
-            "idler outside the solved band",
-            "gamma not known",
+            f"pump {OUTSIDE_BAND}",
+            f"signal {OUTSIDE_BAND}",
+            f"idler {OUTSIDE_BAND}: the signal has twice the pump's frequency or more",
+            f"idler {OUTSIDE_BAND}",
+            GAMMA_UNKNOWN,
             "no pump power: no idler",
         ],
         default="",

@@ -24,6 +24,8 @@ class TaylorCurve:
     notes: tuple[str, ...] = ()
     mode: str = "TE0"
     bend_radius_um: float | None = None
+    section: object = None
+    provenance: object = None
 
     @property
     def band_rad_per_ps(self):

@@ -40,12 +40,14 @@ from materials.common.printing import format_number, printed
 
 __all__ = [
     "ErrorBars",
+    "FullResult",
     "Provenance",
     "Result",
     "Variable",
     "format_number",
     "frozen_array",
     "make_provenance",
+    "package_version",
     "quantity",
 ]
 
@@ -153,10 +155,11 @@ class Provenance:
     host: str = dataclasses.field(default="", compare=False)
 
     def as_dict(self) -> dict[str, Any]:
-        """Everything as plain values; what differs from run to run stands under "made"."""
+        """Everything but the host as plain values; what differs from run to run in "made"."""
         out = {f.name: getattr(self, f.name) for f in dataclasses.fields(self) if f.compare}
         out["details"] = dict(self.details)
-        made = {"at": self.made_at, "seconds": self.seconds, "host": self.host}
+        # the host stays with the object: files are handed on, names of machines need not be
+        made = {"at": self.made_at, "seconds": self.seconds}
         out["made"] = {k: v for k, v in made.items() if v not in ("",) and v == v}
         return {k: v for k, v in plain(out).items() if v not in ("", [], {})}
 
@@ -168,7 +171,7 @@ def make_provenance(
     import scipy
 
     return Provenance(
-        version=_version(),
+        version=package_version(),
         materials=tuple(dict.fromkeys(materials)),
         grid=grid,
         details=tuple((k, str(v)) for k, v in details.items()),
@@ -181,7 +184,8 @@ def make_provenance(
     )
 
 
-def _version() -> str:
+def package_version() -> str:
+    """Version of Idlermap, as installed."""
     from importlib import metadata
 
     try:
@@ -193,10 +197,9 @@ def _version() -> str:
 class Result:
     """Mixin of all result dataclasses: a printed table, CSV and HDF5.
 
-    A subclass declares its numbers with `quantity` and has, by convention, the fields
-    ``error`` (`ErrorBars`), ``inputs`` (mapping), ``notes`` (tuple of str) and
-    ``provenance`` (`Provenance`). One that keeps its numbers otherwise overrides
-    `variables`. Arrays are made read-only, also after unpickling.
+    A subclass declares its numbers with `quantity`; `FullResult` gives it the fields
+    ``error``, ``inputs``, ``notes`` and ``provenance``. One that keeps its numbers
+    otherwise overrides `variables`. Arrays are made read-only, also after unpickling.
     """
 
     __slots__ = ()
@@ -264,6 +267,27 @@ class Result:
 
     def __repr__(self) -> str:
         return printed(_title(self), self.variables(), getattr(self, "notes", ()) or ())
+
+
+@dataclasses.dataclass(frozen=True, slots=True, eq=False, kw_only=True)
+class FullResult(Result):
+    """A result with the four things that stand beside its numbers.
+
+    Attributes
+    ----------
+    error : ErrorBars
+        Absolute bars by the name of the quantity.
+    inputs : mapping
+        What was asked for, as plain values.
+    notes : tuple of str
+        What to know about the numbers.
+    provenance : Provenance or None
+    """
+
+    error: ErrorBars = dataclasses.field(default_factory=ErrorBars)
+    inputs: Mapping[str, Any] = dataclasses.field(default_factory=dict)
+    notes: tuple[str, ...] = ()
+    provenance: Provenance | None = None
 
 
 def _title(result: Any) -> str:

@@ -16,7 +16,7 @@ import xarray
 
 import phasematch
 from phasematch import cli
-from phasematch.mixing import LASER_CAUTION
+from phasematch.caution import LASER_CAUTION
 
 DESIGN = """
 [cross_section]

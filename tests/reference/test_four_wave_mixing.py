@@ -11,6 +11,7 @@ from materials.common.constants import TWO_PI, um_from_omega
 from phasematch import mixing
 from phasematch.channel import Channel
 from phasematch.waves import mix, photons
+from phasematch.weak_mixing import weak_photons_m2
 
 from ..synthetic_curve import TaylorCurve
 
@@ -107,6 +108,6 @@ def test_pairs_per_second_with_gamma_that_follows_the_frequency():
 
 @pytest.mark.source("moment equations of spontaneous mixing, computed", "alpha L = 0.5", "10")
 def test_weak_pairs_with_equal_loss():
-    weak = mixing.weak_photons_m2(0.0, 50.0, 0.01)
+    weak = weak_photons_m2(0.0, 50.0, 0.01)
     got = [1e4 * float(part) for part in (weak.coincidences, weak.singles, weak.stimulated)]
     assert got == pytest.approx([0.3678794412, 0.4376919836, 0.3756077501], rel=2e-10)

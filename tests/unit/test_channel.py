@@ -11,8 +11,9 @@ from scipy.integrate import solve_ivp
 
 from materials.common.constants import TWO_PI, omega_from_um
 from materials.common.errors import InputError, OutOfRange
+from phasematch.caution import LASER_CAUTION
 from phasematch.channel import Channel
-from phasematch.mixing import LASER_CAUTION, idler_um
+from phasematch.mixing import idler_um
 
 from ..synthetic_curve import curve, with_bars
 

@@ -8,7 +8,8 @@ import numpy as np
 import pytest
 
 from materials.common.constants import omega_from_um
-from phasematch import mixing
+from phasematch import curve_protocol, mixing
+from phasematch.weak_mixing import weak_photons_m2
 
 from ..synthetic_curve import curve, with_bars
 
@@ -87,7 +88,7 @@ def test_power_phase_vanishes_without_power_even_when_gamma_is_unknown():
 def test_weak_photons_agree_with_plain_quadrature_of_the_moment_equations():
     alpha, length = 46.0, 0.01
     k = np.array([0.0, 1e-5, 0.3, 3.0, 40.0]) / length
-    got = mixing.weak_photons_m2(k, alpha, length)
+    got = weak_photons_m2(k, alpha, length)
     x, w = np.polynomial.legendre.leggauss(200)
     z, w = 0.5 * length * (x + 1), 0.5 * length * w
     for i, kappa in enumerate(k):
@@ -104,7 +105,7 @@ def test_weak_photons_agree_with_plain_quadrature_of_the_moment_equations():
 
 def test_weak_photons_keep_their_digits_when_loss_and_mismatch_vanish():
     tiny = np.array([0.0, 1e-160, 1e-12, 1e-6])
-    got = mixing.weak_photons_m2(tiny[:, None], tiny, 1.0)
+    got = weak_photons_m2(tiny[:, None], tiny, 1.0)
     # first orders: stimulated exp(-2a), singles exp(-a)(1 - 2a/3), coincidences exp(-2a)
     a = np.broadcast_to(tiny, (4, 4))
     np.testing.assert_allclose(got.stimulated, 1 - 2 * a, atol=5e-12)
@@ -112,19 +113,21 @@ def test_weak_photons_keep_their_digits_when_loss_and_mismatch_vanish():
     np.testing.assert_allclose(got.coincidences, 1 - 2 * a, atol=5e-12)
     # across the changes of formula at a = 0.5 and k = 1 there is no step
     for a0, k0 in ((0.5, 0.3), (0.2, 1.0)):
-        below = mixing.weak_photons_m2(k0 * (1 - 1e-14), a0 * (1 - 1e-14), 1.0)
-        above = mixing.weak_photons_m2(k0 * (1 + 1e-14), a0 * (1 + 1e-14), 1.0)
+        below = weak_photons_m2(k0 * (1 - 1e-14), a0 * (1 - 1e-14), 1.0)
+        above = weak_photons_m2(k0 * (1 + 1e-14), a0 * (1 + 1e-14), 1.0)
         assert below.singles == pytest.approx(float(above.singles), rel=1e-12)
 
 
 def test_error_bar_is_the_weighted_sum_of_the_changes():
     c = with_bars(curve(), weight=2.0, beta2=0.5, n_eff=1e-6)
-    got = mixing.error_bar(c, lambda k: k.beta2_ps2_per_km(1.55))
+    got = curve_protocol.error_bar(c, lambda k: k.beta2_ps2_per_km(1.55))
     assert got == pytest.approx(2.0 * 0.5, rel=1e-9)
-    both = mixing.error_bar(c, lambda k: np.array([k.n_eff(1.55), k.beta2_ps2_per_km(1.55)]))
+    both = curve_protocol.error_bar(
+        c, lambda k: np.array([k.n_eff(1.55), k.beta2_ps2_per_km(1.55)])
+    )
     np.testing.assert_allclose(both, [2e-6, 1.0], rtol=1e-8)
-    assert mixing.error_bar(curve(), lambda k: k.n_eff(1.55)) == 0.0
-    assert math.isnan(mixing.error_bar(c, lambda k: math.nan))
+    assert curve_protocol.error_bar(curve(), lambda k: k.n_eff(1.55)) == 0.0
+    assert math.isnan(curve_protocol.error_bar(c, lambda k: math.nan))
 
 
 def test_frequencies_rounded_over_the_edge_count_as_inside():
@@ -132,8 +135,8 @@ def test_frequencies_rounded_over_the_edge_count_as_inside():
     short, long = c.band_um
     edges = np.array([omega_from_um(short), omega_from_um(long)])
     nudged = edges * (1 + np.array([1, -1]) * 4e-16)
-    assert np.all(mixing.inside(c, nudged))
-    assert np.all(np.isfinite(c.beta_rad_per_um(mixing.snap(c, nudged))))
-    assert not np.any(mixing.inside(c, edges * (1 + np.array([1, -1]) * 1e-9)))
-    assert np.all(np.isnan(mixing.gamma_or_nan(c, [short * 0.9, long * 1.1])))
-    assert np.all(np.isfinite(mixing.gamma_or_nan(c, [short, 1.55, long])))
+    assert np.all(curve_protocol.inside(c, nudged))
+    assert np.all(np.isfinite(c.beta_rad_per_um(curve_protocol.snap(c, nudged))))
+    assert not np.any(curve_protocol.inside(c, edges * (1 + np.array([1, -1]) * 1e-9)))
+    assert np.all(np.isnan(curve_protocol.gamma_or_nan(c, [short * 0.9, long * 1.1])))
+    assert np.all(np.isfinite(curve_protocol.gamma_or_nan(c, [short, 1.55, long])))

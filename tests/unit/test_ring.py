@@ -13,7 +13,7 @@ from materials.common.constants import C_UM_PER_PS, HBAR_W_PS2, TWO_PI
 from materials.common.errors import InputError, OutOfRange, SolverError
 from phasematch import cavity
 from phasematch.bend_note import bend_shift
-from phasematch.mixing import LASER_CAUTION
+from phasematch.caution import LASER_CAUTION
 from phasematch.resonances import find_lines
 from phasematch.ring import Ring
 
@@ -43,7 +43,7 @@ def exact_offsets(c, radius, orders):
 
 def test_resonances_and_misalignment_keep_their_digits():
     ring = nitride()
-    order = ring._pump_order(1.55)
+    order = ring.pump_order(1.55)
     mu = np.array([1, 2, 7, 30, 100])
     table = ring.pairs(1.55, 100)
     orders = np.concatenate([[order], order + mu, order - mu])
@@ -99,7 +99,7 @@ def test_pairs_beyond_the_band_are_nan_with_the_reason():
     table = nitride().pairs(1.55, 300)
     gone = np.isnan(table.misalignment_mhz)
     assert gone.any() and not gone.all()
-    assert np.array_equal(gone, table.reason == "beyond the solved band")
+    assert np.array_equal(gone, table.reason == "outside the solved band")
     assert np.array_equal(~gone, table.reason == "")
     assert not table.aligned[gone].any()
     assert np.isnan(table.linewidth_mhz[gone]).all()
@@ -247,7 +247,7 @@ def test_rates_stop_at_threshold_with_the_reason():
     assert "threshold" in above.reason[first - 1]
     assert all(above.reason)
     assert np.isnan(ring.stimulated(1.55, power * 1.01, 1e-9, 60).idler_w).all()
-    # a pair that was not asked for stops the others too
+    # a pair that was beyond the ones listed stops the others too
     few = ring.spontaneous(1.55, power * (1 + 1e-6), first - 1)
     assert np.isnan(few.pairs_inside_per_s).all()
     assert f"pair {first}" in few.reason[0]

@@ -10,16 +10,16 @@ from typing import Any
 import numpy as np
 
 from materials.common import inputs
-from materials.common.constants import TWO_PI, omega_from_um, um_from_omega
+from materials.common.constants import RAD_PER_PS_TO_HZ, omega_from_um, um_from_omega
 from materials.common.errors import InputError
-from phasematch.mixing import Curve, inside, snap
+from phasematch.curve_protocol import Curve, inside, snap
 from phasematch.quadrature import integrate, phase_nodes
+from phasematch.reasons import OUTSIDE_BAND
 
 #: Signal frequencies -> (density per Hz, phase kappa L/2 in rad).
 Spectrum = Callable[[np.ndarray], tuple[np.ndarray, np.ndarray]]
 
-_PER_S = 1e12 / TWO_PI  # rad/ps of bandwidth in hertz
-_RTOL = 1e-8  # a hundredth of the 1e-6 that is promised
+_RTOL = 1e-8  # rounding of beta, 1e-15 of some 1e5 rad of phase, leaves no more to gain
 
 
 @dataclass(frozen=True, slots=True)
@@ -48,12 +48,12 @@ def signal_range(
         For a filter that holds the pump: its two photons could not be told apart.
     """
     if not inside(curve, pump_rad_per_ps):
-        return SignalRange(math.nan, math.nan, "pump outside the solved band")
+        return SignalRange(math.nan, math.nan, f"pump {OUTSIDE_BAND}")
     pump = float(snap(curve, pump_rad_per_ps))
     band_low, band_high = curve.band_rad_per_ps
     least, most = max(band_low, 2 * pump - band_high), min(band_high, 2 * pump - band_low)
     if signal_band_um is None and idler_band_um is None:
-        reason = "" if most > pump else "the pump lies at the edge of the solved band"
+        reason = "" if most > pump else f"every signal or idler {OUTSIDE_BAND}"
         return SignalRange(pump, most, reason)
     low, high = -math.inf, math.inf
     for name, band, mirrored in (
@@ -70,7 +70,7 @@ def signal_range(
         return SignalRange(math.nan, math.nan, empty=True)
     slack = 1e-12 * pump
     if low < least - slack or high > most + slack:
-        reason = "a filter, or its mirror image about the pump, leaves the solved band"
+        reason = f"a filter, or its mirror image about the pump, {OUTSIDE_BAND}"
         return SignalRange(low, high, reason)
     return SignalRange(max(low, least), min(high, most))
 
@@ -98,7 +98,7 @@ def integrate_flux(spectrum: Spectrum, span: SignalRange) -> tuple[float, float]
         return math.nan, math.nan
     edges = phase_nodes(lambda w: spectrum(w)[1], span.low, span.high, 0.5 * math.pi)
     value, error = integrate(lambda w: spectrum(w)[0], edges, rtol=_RTOL)
-    return value * _PER_S, error * _PER_S
+    return value * RAD_PER_PS_TO_HZ, error * RAD_PER_PS_TO_HZ
 
 
 def beyond_note(spectrum: Spectrum, span: SignalRange, flux: float) -> tuple[str, ...]:
@@ -120,7 +120,7 @@ def beyond_note(spectrum: Spectrum, span: SignalRange, flux: float) -> tuple[str
     fringe = math.pi * 1e-3 * width / max(abs(phase[1] - phase[0]), 1e-300)
     last = span.high - np.linspace(0.0, min(fringe, 0.25 * width), 65)
     envelope = float(np.max(spectrum(last)[0]))
-    tail = 0.5 * envelope * width / 3.0 * _PER_S
+    tail = 0.5 * envelope * width / 3.0 * RAD_PER_PS_TO_HZ
     if not np.isfinite(tail) or tail < 1e-6 * flux:
         return ()
     share = 100.0 * tail / flux

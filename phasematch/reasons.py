@@ -1,0 +1,38 @@
+"""Why a number is missing, and which missing numbers make a run one with failed points.
+
+The solved band is the user's choice: what lies outside it has no value by design, and no
+verb counts it. Every other missing value does, whatever the verb: a mode that is not
+guided at some width, a medium without n2, a ring at its threshold of oscillation.
+
+Examples
+--------
+>>> from types import SimpleNamespace
+>>> count_failed([SimpleNamespace(reason=["", OUTSIDE_BAND, "gamma not known"])])
+1
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterable
+from typing import Any
+
+import numpy as np
+
+#: Stands in the reason of every number that lies outside the solved band.
+OUTSIDE_BAND = "outside the solved band"
+
+GAMMA_UNKNOWN = "gamma not known"
+
+
+def outside_or_good(good: np.ndarray) -> np.ndarray:
+    """Reasons of points that are in the band or not: "" where ``good``."""
+    return np.where(good, "", OUTSIDE_BAND)
+
+
+def count_failed(results: Iterable[Any]) -> int:
+    """Points of results without a value for another reason than lying outside the band.
+
+    Results that have no field ``reason`` have no such points.
+    """
+    reasons = (np.ravel(getattr(result, "reason", "")).tolist() for result in results)
+    return sum(bool(why) and OUTSIDE_BAND not in why for some in reasons for why in some)
