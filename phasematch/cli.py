@@ -98,9 +98,9 @@ def modes(
 ) -> None:
     """List the guided modes at one wavelength."""
     from modesolve.mode import solve_modes
+    from modesolve.tables import mode_table
     from phasematch.report import modes_report
     from phasematch.study import section_of
-    from phasematch.tables import mode_table
 
     check_file(output, replace)
     checked = read(design, changes)

@@ -79,8 +79,8 @@ def betas(
     replace: bool,
 ) -> None:
     """beta_k about a pump, in ps^k/km."""
+    from modesolve.tables import beta_table
     from phasematch.study import solve_curve
-    from phasematch.tables import beta_table
 
     check_file(output, replace)
     checked = read(design, changes)
@@ -112,8 +112,8 @@ def taper(
 
     Widths where the mode is missing are NaN with the reason; the exit code is then 3.
     """
+    from modesolve.tables import taper_table
     from phasematch.study import section_of
-    from phasematch.tables import taper_table
 
     check_file(output, replace)
     checked = read(design, changes)

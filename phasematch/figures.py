@@ -24,9 +24,9 @@ from materials.common.files import whole_file
 
 if TYPE_CHECKING:
     from modesolve import Mode
+    from modesolve.tables import DispersionTable
     from phasematch.channel_results import ChannelMap
     from phasematch.ring_results import DetuningMap, PairTable
-    from phasematch.tables import DispersionTable
 
 #: Width of a column, inches.
 COLUMN_IN = 3.4

@@ -12,13 +12,13 @@ from rich.table import Table
 from rich.text import Text
 
 from materials.common.results import format_number
-from phasematch.mixing import LASER_CAUTION
+from phasematch.caution import LASER_CAUTION
 
 if TYPE_CHECKING:
+    from modesolve.tables import DispersionTable, ModeTable
     from phasematch.channel_results import ConversionBand, PairFlux
     from phasematch.design_tables import ChannelTable, RingTable
     from phasematch.study import Outcome, RingResults
-    from phasematch.tables import DispersionTable, ModeTable
 
 #: Width of a report, columns.
 WIDTH = 80
