@@ -15,6 +15,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 from functools import lru_cache
+from typing import Any
 
 import numpy as np
 from numpy.polynomial import chebyshev
@@ -40,11 +41,11 @@ class Band:
         """Half the band's width, rad/ps."""
         return 0.5 * (self.high - self.low)
 
-    def scaled(self, omega):
+    def scaled(self, omega: Any) -> Any:
         """Frequency on -1 .. 1."""
         return (np.asarray(omega) - self.centre) / self.half_width
 
-    def frequency(self, t):
+    def frequency(self, t: Any) -> Any:
         """Angular frequency of a scaled one."""
         return self.centre + self.half_width * np.asarray(t)
 
@@ -81,7 +82,9 @@ def _newton_coefficients(nodes: np.ndarray, taylor: np.ndarray) -> np.ndarray:
     return np.array(out)
 
 
-def _newton_value(nodes: np.ndarray, orders: int, coefficients: np.ndarray, t: np.ndarray):
+def _newton_value(
+    nodes: np.ndarray, orders: int, coefficients: np.ndarray, t: np.ndarray
+) -> np.ndarray:
     """Value of the Newton form (Horner)."""
     z = np.repeat(nodes, orders)
     value = np.full(t.shape, coefficients[-1])
@@ -127,7 +130,7 @@ class BandFunction:
         coefficients[0] *= 0.5
         return cls(band, coefficients)
 
-    def __call__(self, omega, derivative: int = 0) -> np.ndarray:
+    def __call__(self, omega: Any, derivative: int = 0) -> np.ndarray:
         """d^k/domega^k at ``omega`` (rad/ps); any shape; not checked against the band."""
         coefficients = self.coefficients
         if derivative:

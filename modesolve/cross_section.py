@@ -21,6 +21,9 @@ __all__ = ["CrossSection"]
 #: Allowed sizes, um.
 SMALLEST_UM, LARGEST_UM = 0.005, 100.0
 
+#: Temperatures of a chip, degC.
+COLDEST_DEGC, HOTTEST_DEGC = -273.15, 1000.0
+
 #: Least inclination of an etched wall, degrees from the chip's plane.
 FLATTEST_DEG = 60.0
 
@@ -106,9 +109,8 @@ class CrossSection:
             )
         self._check_shape()
         if self.temperature_degc is not None:
-            put(
-                self, "temperature_degc", _number(self.temperature_degc, "temperature_degc", "degC")
-            )
+            put(self, "temperature_degc", _temperature(self.temperature_degc))
+            _ = self.media  # a medium without dn/dT speaks now
 
     def _check_shape(self) -> None:
         put = object.__setattr__
@@ -156,13 +158,15 @@ class CrossSection:
     @property
     def media(self) -> tuple[Medium, ...]:
         """Every medium in use, once each, core first, at the chip's temperature."""
-        found = {id(medium): medium for medium in self._stated()}
-        return tuple(found.values())
+        found = {id(medium): medium for medium in self._stated()}.values()
+        if self.temperature_degc is None:
+            return tuple(found)
+        return tuple(medium.at_temperature(self.temperature_degc) for medium in found)
 
     def layout(self) -> Layout:
         """Axes and media for the solver: half of the section, mirror plane at x = 0."""
-        media = self.media
-        number = {id(medium): i for i, medium in enumerate(media)}
+        stated = {id(medium): medium for medium in self._stated()}
+        number = {key: i for i, key in enumerate(stated)}
         core, cladding = number[id(self.core)], number[id(self.cladding)]
         rows: list[tuple[int, int]] = [(number[id(self.substrate)],) * 2]
         walls = [0.0]
@@ -178,12 +182,10 @@ class CrossSection:
             rows.append((number[id(medium)],) * 2)
             walls.append(walls[-1] + thickness)
         rows.append((cladding, cladding))
-        if self.temperature_degc is not None:
-            media = tuple(m.at_temperature(self.temperature_degc) for m in media)
         return Layout(
             across=Axis((0.0, 0.5 * self.width_um), low="mirror", high="open"),
             up=Axis(tuple(walls)),
-            media=media,
+            media=self.media,
             fill=tuple(tuple(row[i] for row in rows) for i in (0, 1)),
             core=core,
             mirror=True,
@@ -235,6 +237,16 @@ def _number(value: object, name: str, unit: str) -> float:
     if not math.isfinite(number):
         raise OutOfRange(f"{name} = {value}: give a finite number {f'in {unit}' if unit else ''}")
     return number
+
+
+def _temperature(value: object) -> float:
+    degc = _number(value, "temperature_degc", "degC")
+    if not COLDEST_DEGC <= degc <= HOTTEST_DEGC:
+        raise OutOfRange(
+            f"temperature_degc = {degc:g} degC: allowed {COLDEST_DEGC:g} to {HOTTEST_DEGC:g}, "
+            "where a constant dn/dT means something"
+        )
+    return degc
 
 
 def _size(value: object, name: str) -> float:

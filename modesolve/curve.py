@@ -111,7 +111,7 @@ class DispersionCurve(Result):
         bars["zero_dispersion_um"] = self._zero_dispersion_bar
         return ErrorBars(bars)
 
-    def beta_rad_per_um(self, omega_rad_per_ps, derivative: int = 0):
+    def beta_rad_per_um(self, omega_rad_per_ps: Any, derivative: int = 0) -> Any:
         """Propagation constant, or its k-th derivative, in rad/um ps^k; NaN outside the band.
 
         beta = n omega/c, so beta^(k) = (omega n^(k) + k n^(k-1))/c, exact for the curve.
@@ -125,51 +125,51 @@ class DispersionCurve(Result):
         inside = (omega >= self.band.low - slack) & (omega <= self.band.high + slack)
         return _like(omega, np.where(inside, value / C_UM_PER_PS, np.nan))
 
-    def n_eff(self, wavelength_um):
+    def n_eff(self, wavelength_um: Any) -> Any:
         """Effective index."""
         return self._figure("n_eff", wavelength_um)
 
-    def n_group(self, wavelength_um):
+    def n_group(self, wavelength_um: Any) -> Any:
         """Group index, c dbeta/domega."""
         return self._figure("n_group", wavelength_um)
 
-    def beta2_ps2_per_km(self, wavelength_um):
+    def beta2_ps2_per_km(self, wavelength_um: Any) -> Any:
         """Group-velocity dispersion, ps2/km."""
         return self._figure("beta2_ps2_per_km", wavelength_um)
 
-    def beta3_ps3_per_km(self, wavelength_um):
+    def beta3_ps3_per_km(self, wavelength_um: Any) -> Any:
         """Third-order dispersion, ps3/km."""
         return self._figure("beta3_ps3_per_km", wavelength_um)
 
-    def beta4_ps4_per_km(self, wavelength_um):
+    def beta4_ps4_per_km(self, wavelength_um: Any) -> Any:
         """Fourth-order dispersion, ps4/km."""
         return self._figure("beta4_ps4_per_km", wavelength_um)
 
-    def dispersion_ps_per_nm_km(self, wavelength_um):
+    def dispersion_ps_per_nm_km(self, wavelength_um: Any) -> Any:
         """Dispersion D = -(2 pi c/lambda^2) beta2, ps/(nm km)."""
         return self._figure("dispersion_ps_per_nm_km", wavelength_um)
 
-    def effective_area_um2(self, wavelength_um):
+    def effective_area_um2(self, wavelength_um: Any) -> Any:
         """Nonlinear effective area 2 pi n2_core/(lambda gamma), um2."""
         return self._figure("effective_area_um2", wavelength_um)
 
-    def intensity_area_um2(self, wavelength_um):
+    def intensity_area_um2(self, wavelength_um: Any) -> Any:
         """Area in intensity form, (int |e|^2)^2 / int |e|^4, um2."""
         return self._figure("intensity_area_um2", wavelength_um)
 
-    def power_area_um2(self, wavelength_um):
+    def power_area_um2(self, wavelength_um: Any) -> Any:
         """Area in power form, (int Sz)^2 / int Sz^2, um2."""
         return self._figure("power_area_um2", wavelength_um)
 
-    def gamma_per_w_m(self, wavelength_um):
+    def gamma_per_w_m(self, wavelength_um: Any) -> Any:
         """Nonlinear coefficient, 1/(W m); NaN where the core has no n2."""
         return self._figure("gamma_per_w_m", wavelength_um)
 
-    def te_fraction(self, wavelength_um):
+    def te_fraction(self, wavelength_um: Any) -> Any:
         """int |Ex|^2 over int (|Ex|^2 + |Ey|^2)."""
         return self._figure("te_fraction", wavelength_um)
 
-    def core_power_fraction(self, wavelength_um):
+    def core_power_fraction(self, wavelength_um: Any) -> Any:
         """Share of the power that flows in the core."""
         return self._figure("core_power_fraction", wavelength_um)
 
@@ -199,11 +199,11 @@ class DispersionCurve(Result):
 
         return error_bar(paired, self, self.alternates)
 
-    def _bar(self, key: str, wavelength_um):
+    def _bar(self, key: str, wavelength_um: Any) -> Any:
         """Error bar of a method at wavelengths in um."""
         return error_bar(lambda curve: getattr(curve, key)(wavelength_um), self, self.alternates)
 
-    def _omega(self, wavelength_um) -> np.ndarray:
+    def _omega(self, wavelength_um: Any) -> np.ndarray:
         wavelength = np.asarray(wavelength_um, dtype=float)
         short, long = self.band_um
         slack = 1e-9
@@ -216,7 +216,7 @@ class DispersionCurve(Result):
             )
         return omega_from_um(wavelength)
 
-    def _figure(self, name: str, wavelength_um):
+    def _figure(self, name: str, wavelength_um: Any) -> Any:
         """A figure of `modesolve.quantities` at wavelengths in um."""
         omega = np.clip(self._omega(wavelength_um), self.band.low, self.band.high)
 
@@ -243,6 +243,6 @@ class DispersionCurve(Result):
         return out
 
 
-def _like(template, value):
+def _like(template: Any, value: Any) -> Any:
     """Scalars in, scalars out."""
     return float(value) if np.ndim(template) == 0 else np.asarray(value)

@@ -13,6 +13,7 @@ import time
 from collections.abc import Callable
 from dataclasses import replace
 from functools import partial
+from typing import Any
 
 import numpy as np
 
@@ -35,6 +36,7 @@ from materials.common.results import (
 from modesolve.band import Band, BandFunction, leja_nodes
 from modesolve.cross_section import CrossSection
 from modesolve.curve import CurveReport, DispersionCurve
+from modesolve.layout import Layout
 from modesolve.maps import Margins
 from modesolve.mode import section_notes
 from modesolve.refine import LADDER, Resolved, refine
@@ -95,7 +97,7 @@ def dispersion(
     layout = section.layout()
     for end in (band.low, band.high):
         layout.permittivity(end, 0)  # a medium whose table ends inside the band speaks now
-    check_core(section, layout, omega_from_um(reference))
+    check_core(layout, omega_from_um(reference))
     start = find_labelled(layout, omega_from_um(reference), mode, ladder)
     build = _Build(layout, band, start, ladder, progress)
     build.run()
@@ -114,9 +116,16 @@ def _checked_band(from_um: float, to_um: float) -> Band:
 class _Build:
     """A curve while its nodes are being added."""
 
-    def __init__(self, layout, band, start: Resolved, ladder, progress) -> None:
+    def __init__(
+        self,
+        layout: Layout,
+        band: Band,
+        start: Resolved,
+        ladder: tuple[int, ...],
+        progress: Callable[[int, str], None] | None,
+    ) -> None:
         self.layout = layout
-        self.band: Band = band
+        self.band = band
         self.ladder = ladder
         self.progress = progress
         self.start = start
@@ -172,31 +181,25 @@ class _Build:
     def _values(self) -> list[dict]:
         return [r.values for r in self.resolved]
 
-    def _gap(self, omega: np.ndarray, a: BandFunction, b: BandFunction) -> tuple[float, float]:
-        """Largest differences of two index functions in n_eff and in omega n'' + 2 n' (c beta2)."""
-        second = omega * (a(omega, 2) - b(omega, 2)) + 2.0 * (a(omega, 1) - b(omega, 1))
-        return float(np.max(np.abs(a(omega) - b(omega)))), float(np.max(np.abs(second)))
-
     def _settled(self) -> bool:
         omega = self.band.frequency(np.linspace(-1.0, 1.0, CHECK_POINTS))
-        full = self._functions(self._values())["n_eff"]
-        short = self._functions(self._values(), -1)["n_eff"]
-        n_gap, beta2_gap = self._gap(omega, full, short)
-        allowed = np.max([r.bar(partial(_curve_figures, r.omega)) for r in self.resolved], axis=0)
-        return n_gap <= INTERPOLATION_SHARE * allowed[0] and (
-            beta2_gap <= INTERPOLATION_SHARE * allowed[1]
-        )
+        full, short = (_index_figures(self._index(orders), omega) for orders in (None, -1))
+        gaps = np.max(np.abs(full - short), axis=1)
+        bars = [r.bar(partial(_node_figures, r.omega)) for r in self.resolved]
+        return bool(np.all(gaps <= INTERPOLATION_SHARE * np.max(bars, axis=0)))
 
     def _surprise(self, node: Resolved) -> tuple[float, float]:
         """What the curve so far misses at a node that it has not seen."""
-        full = self._functions(self._values())["n_eff"]
-        told = np.array(
-            [full(node.omega), node.omega * full(node.omega, 2) + 2 * full(node.omega, 1)]
-        )
-        miss = np.abs(told - _curve_figures(node.omega, node.values))
+        told = _index_figures(self._index(None), node.omega)
+        miss = np.abs(told - _node_figures(node.omega, node.values))
         return float(miss[0]), float(miss[1] / C_UM_PER_PS * PER_UM_TO_PER_KM)
 
-    def curve(self, section: CrossSection, mode: str, reference_um: float, started: float):
+    def _index(self, orders: int | None) -> BandFunction:
+        return self._functions(self._values(), orders)["n_eff"]
+
+    def curve(
+        self, section: CrossSection, mode: str, reference_um: float, started: float
+    ) -> DispersionCurve:
         """The finished curve with its alternates."""
         reports = [r.report for r in self.resolved]
         report = CurveReport(
@@ -246,7 +249,12 @@ def _index_series(resolved: Resolved, values: dict[str, np.ndarray]) -> np.ndarr
     return C_UM_PER_PS * series.divide(beta, omega)
 
 
-def _curve_figures(omega: float, values: dict[str, np.ndarray]) -> np.ndarray:
+def _node_figures(omega: float, values: dict[str, np.ndarray]) -> np.ndarray:
     """n_eff and c beta2 of a node."""
     beta = np.real(values["beta"])
     return np.array([C_UM_PER_PS * beta[0] / omega, C_UM_PER_PS * 2.0 * beta[2]])
+
+
+def _index_figures(index: BandFunction, omega: Any) -> np.ndarray:
+    """n_eff and c beta2 = omega n'' + 2 n' of an index function."""
+    return np.array([index(omega), omega * index(omega, 2) + 2.0 * index(omega, 1)])

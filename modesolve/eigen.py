@@ -145,10 +145,9 @@ class Pencil:
         self.operators = operators
         self.k0 = k0
         self.permittivity = permittivity
-        self.matrix = operators.pencil(k0, permittivity)
+        self.across, self.along = operators.masses(permittivity)
+        self.matrix = operators.pencil(k0, self.across, self.along)
         self.mass = operators.inverse_mu
-        self.across = sum(e * m.across for e, m in zip(permittivity, operators.media, strict=True))
-        self.along = sum(e * m.along for e, m in zip(permittivity, operators.media, strict=True))
         self.factorisations = 0
 
     def residual_limit(self, eigenvalue: complex) -> float:
@@ -214,7 +213,6 @@ def nearest_modes(
     factorisation: Factorisation,
     shift: complex,
     count: int,
-    start: np.ndarray | None = None,
     basis: int | None = None,
 ) -> list[RawMode]:
     """The ``count`` eigenpairs nearest to the shift, highest beta^2 first.
@@ -227,8 +225,6 @@ def nearest_modes(
     shift : float or complex
         1/um^2.
     count : int
-    start : ndarray, shape (edges,), optional
-        Start vector; a fixed smooth one by default, so that a run can be repeated.
     basis : int, optional
         Size of the Krylov basis.
 
@@ -239,8 +235,7 @@ def nearest_modes(
     """
     size = pencil.matrix.shape[0]
     count = min(count, size - 2)
-    if start is None:
-        start = 1.0 + 0.5 * np.cos(np.arange(size))
+    start = 1.0 + 0.5 * np.cos(np.arange(size))  # fixed, so that a run can be repeated
     operator = LinearOperator(
         (size, size),
         matvec=lambda x: factorisation.solve(pencil.mass @ x),

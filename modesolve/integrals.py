@@ -35,7 +35,8 @@ class QuarterFields:
     """Physical field series in the quarter cells, shape (order + 1, n_u, n_v, 2, 2).
 
     ``y_x``, ``y_y``: the left vector's components; transverse h' is n_eff z x y.
-    ``area``: physical area of each quarter cell, um^2 (no order axis).
+    ``area``: physical area of each quarter cell, um^2, and ``arc`` its arc-length factor
+    (no order axis).
     """
 
     e_x: np.ndarray
@@ -48,19 +49,14 @@ class QuarterFields:
 
 
 def quarter_fields(operators: Operators, jet: Jet) -> QuarterFields:
-    """Physical components from circulations: E = J^-T E_covariant."""
-    topology, metric = operators.topology, operators.grid.metric
-    u_x, u_y, v_x, v_y = metric.inverse
-    e_u, e_v = topology.to_quarters(jet.right)
-    y_u, y_v = topology.to_quarters(jet.left)
-    g = topology.nodes_to_quarters(jet.longitudinal)
+    """Physical components of the field of a jet."""
+    metric = operators.grid.metric
+    g = operators.topology.nodes_to_quarters(jet.longitudinal)
     e_z = series.multiply(-1j * series.reciprocal(jet.beta), g) / metric.arc
     return QuarterFields(
-        u_x * e_u + v_x * e_v,
-        u_y * e_u + v_y * e_v,
+        *operators.transverse(jet.right),
         e_z,
-        u_x * y_u + v_x * y_v,
-        u_y * y_u + v_y * y_v,
+        *operators.transverse(jet.left),
         QUARTER * metric.det,
         metric.arc,
     )
@@ -129,7 +125,16 @@ def _squared_over(a: np.ndarray, b: np.ndarray) -> np.ndarray:
     return series.divide(series.multiply(a, a), b)
 
 
-def _nonlinear(layout, operators, jet, f, fourth, power, k0, halves) -> dict[str, np.ndarray]:
+def _nonlinear(
+    layout: Layout,
+    operators: Operators,
+    jet: Jet,
+    f: QuarterFields,
+    fourth: np.ndarray,
+    power: np.ndarray,
+    k0: np.ndarray,
+    halves: float,
+) -> dict[str, np.ndarray]:
     """gamma and the nonlinear area."""
     dot = series.multiply(f.e_x, f.e_x) + series.multiply(f.e_y, f.e_y)
     dot = dot + series.multiply(f.e_z, f.e_z)

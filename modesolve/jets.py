@@ -82,7 +82,9 @@ def longitudinal_series(pencil: Pencil, eps: np.ndarray, e: np.ndarray) -> tuple
     return across, series.multiply(series.reciprocal(along), divergence)
 
 
-def apply_series(pencil: Pencil, k0_squared: np.ndarray, eps: np.ndarray, e: np.ndarray):
+def apply_series(
+    pencil: Pencil, k0_squared: np.ndarray, eps: np.ndarray, e: np.ndarray
+) -> np.ndarray:
     """Series of A(omega) e(omega), shape (order + 1, edges)."""
     operators = pencil.operators
     across, divergence = longitudinal_series(pencil, eps, e)

@@ -126,7 +126,7 @@ def solve_modes(
     count = inputs.whole("count", count, most=MOST_MODES)
     omega = omega_from_um(wavelength_um)
     layout = section.layout()
-    check_core(section, layout, omega)
+    check_core(layout, omega)
     scan = resolve_modes(layout, omega, count, ladder)
     if not scan.modes:
         raise NoGuidedMode(
@@ -157,7 +157,7 @@ def find_mode(
     """
     omega = omega_from_um(checked_wavelength(wavelength_um))
     layout = section.layout()
-    check_core(section, layout, omega)
+    check_core(layout, omega)
     resolved = find_labelled(layout, omega, label, ladder)
     return mode_from(section, layout, resolved, label, ())
 

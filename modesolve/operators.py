@@ -271,21 +271,34 @@ class Operators:
         scaled = sp.csr_array(self.topology.curl.multiply(self.inverse_cell_mass[:, None]))
         self.curl_curl = sp.csr_array(self.topology.curl.T @ scaled)
 
-    def _medium_mass(self, inside, uu, vv, uv, zz) -> MediumMass:
+    def _medium_mass(
+        self, inside: np.ndarray, uu: np.ndarray, vv: np.ndarray, uv: np.ndarray, zz: np.ndarray
+    ) -> MediumMass:
         weight = QUARTER * inside[:, :, None, None]
         across = edge_mass(self.topology, weight * uu, weight * vv, weight * uv)
         return MediumMass(inside, across, node_mass(self.topology, weight * zz))
 
-    def pencil(self, k0: float, permittivity: np.ndarray) -> sp.csr_array:
+    def transverse(self, circulations: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
+        """x and y components in the quarter cells from circulations: E = J^-T E_covariant."""
+        u_x, u_y, v_x, v_y = self.grid.metric.inverse
+        along_u, along_v = self.topology.to_quarters(circulations)
+        return u_x * along_u + v_x * along_v, u_y * along_u + v_y * along_v
+
+    def masses(self, permittivity: np.ndarray) -> tuple[sp.csr_array, np.ndarray]:
+        """Me and the diagonal of Mz for one permittivity a medium."""
+        pairs = list(zip(permittivity, self.media, strict=True))
+        across = sp.csr_array(sum(value * medium.across for value, medium in pairs))
+        return across, np.sum([value * medium.along for value, medium in pairs], axis=0)
+
+    def pencil(self, k0: float, across: sp.csr_array, along: np.ndarray) -> sp.csr_array:
         """A(omega) = k0^2 Me - C^T Mmu^-1 C - Mn G Mz^-1 G^T Me.
 
         Parameters
         ----------
         k0 : float, rad/um
-        permittivity : ndarray, shape (media,)
+        across, along : sparse and ndarray
+            Me and the diagonal of Mz.
         """
-        across = sum(e * m.across for e, m in zip(permittivity, self.media, strict=True))
-        along = sum(e * m.along for e, m in zip(permittivity, self.media, strict=True))
         gradient = self.topology.gradient
         scaled = sp.csr_array(gradient.multiply((1.0 / along)[None, :]))
         longitudinal = self.inverse_mu @ (scaled @ (gradient.T @ across))

@@ -28,7 +28,7 @@ from materials.common import series
 from materials.common.alternates import Alternate, error_bar
 from materials.common.constants import C_UM_PER_PS
 from materials.common.errors import InputError, NoGuidedMode, NotConverged
-from modesolve.eigen import Pencil, nearest_modes, polish
+from modesolve.eigen import Factorisation, Pencil, RawMode, nearest_modes, polish
 from modesolve.integrals import mode_series
 from modesolve.jets import Jet, mode_jet
 from modesolve.layout import Corners, Layout
@@ -294,7 +294,14 @@ class _Climb:
         integrals = mode_series(self.layout, pencil.operators, jet)
         return _Level(refinement, pencil.operators, jet, integrals)
 
-    def _jet(self, pencil, factorisation, mode, shift, others) -> Jet:
+    def _jet(
+        self,
+        pencil: Pencil,
+        factorisation: Factorisation,
+        mode: RawMode,
+        shift: float,
+        others: list[RawMode],
+    ) -> Jet:
         """Frequency series; where another mode is too near for the iteration, name it first."""
         try:
             return mode_jet(pencil, factorisation, mode, self.omega, self.permittivity, others)

@@ -5,14 +5,12 @@ from __future__ import annotations
 import re
 from collections.abc import Sequence
 from dataclasses import dataclass
-from typing import Any
 
 import numpy as np
 
 from materials.common import inputs
 from materials.common.constants import um_from_omega
 from materials.common.errors import NoGuidedMode, NotConverged, OutOfRange, UnknownName
-from modesolve.cross_section import CrossSection
 from modesolve.layout import Layout
 from modesolve.refine import LADDER, Resolved, refine
 from modesolve.seeds import cutoff_index, find_seeds, near_cutoff
@@ -115,21 +113,22 @@ def checked_wavelength(wavelength_um: float, name: str = "wavelength_um") -> flo
     return value
 
 
-def check_core(section: CrossSection, layout: Layout, omega: float) -> None:
-    """Refuse a section in which no film has a higher index than what surrounds it."""
+def check_core(layout: Layout, omega: float) -> None:
+    """Refuse a section in which no film has a higher index than what surrounds it.
+
+    Raises
+    ------
+    NoGuidedMode
+    """
     n = layout.indices(omega)
-    around = max(section.cladding, section.substrate, key=lambda m: n[_position(section, m)])
-    outside = n[_position(section, around)]
-    if n.max() <= outside:
+    stack = layout.fill[0]
+    around = max(stack[0], stack[-1], key=lambda i: n[i])
+    if n.max() <= n[around]:
         raise NoGuidedMode(
-            f"core {section.core.key} has index {n[layout.core]:.6f} at "
-            f"{um_from_omega(omega):g} um, not above {around.key} with {outside:.6f}: "
-            "nothing is guided; choose a core of higher index"
+            f"core {layout.media[layout.core].key} has index {n[layout.core]:.6f} at "
+            f"{um_from_omega(omega):g} um, not above {layout.media[around].key} with "
+            f"{n[around]:.6f}: nothing is guided; choose a core of higher index"
         )
-
-
-def _position(section: CrossSection, medium: Any) -> int:
-    return next(i for i, m in enumerate(section.media) if m is medium)
 
 
 def find_labelled(

@@ -86,7 +86,7 @@ def fingerprint(operators: Operators, right: np.ndarray, refinement: int) -> np.
     n_u, n_v = operators.topology.shape
     rows = _blocks(n_u, refinement)
     columns = _blocks(n_v, refinement)
-    for component in _transverse(operators, right):
+    for component in operators.transverse(right):
         cells = (component * area).sum(axis=(2, 3))
         parts.append(np.add.reduceat(np.add.reduceat(cells, rows, axis=0), columns, axis=1))
     out = np.stack(parts)
@@ -95,17 +95,10 @@ def fingerprint(operators: Operators, right: np.ndarray, refinement: int) -> np.
 
 def field_share(operators: Operators, right: np.ndarray, cells: np.ndarray) -> float:
     """Share of int |E_t|^2 dA in a set of cells."""
-    e_x, e_y = _transverse(operators, right)
+    e_x, e_y = operators.transverse(right)
     density = (np.abs(e_x) ** 2 + np.abs(e_y) ** 2) * np.abs(operators.grid.metric.det)
     density = density.sum(axis=(2, 3))
     return float(density[cells].sum() / density.sum())
-
-
-def _transverse(operators: Operators, right: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
-    """Ex and Ey in the quarter cells."""
-    u_x, u_y, v_x, v_y = operators.grid.metric.inverse
-    e_u, e_v = operators.topology.to_quarters(right)
-    return u_x * e_u + v_x * e_v, u_y * e_u + v_y * e_v
 
 
 def _blocks(cells: int, refinement: int) -> np.ndarray:

@@ -23,11 +23,12 @@ Examples
 from __future__ import annotations
 
 import math
+from typing import Any
 
 import numpy as np
 
 
-def variable(value, order: int) -> np.ndarray:
+def variable(value: Any, order: int) -> np.ndarray:
     """Series of the independent variable about ``value``, shape (order + 1, ...)."""
     value = np.asarray(value, dtype=float)
     out = np.zeros((order + 1, *value.shape), dtype=value.dtype)
@@ -37,7 +38,7 @@ def variable(value, order: int) -> np.ndarray:
     return out
 
 
-def constant(value, order: int) -> np.ndarray:
+def constant(value: Any, order: int) -> np.ndarray:
     """Series of a constant, shape (order + 1, ...)."""
     value = np.asarray(value)
     if not np.issubdtype(value.dtype, np.complexfloating):
@@ -132,7 +133,7 @@ def exp(a: np.ndarray) -> np.ndarray:
     return out
 
 
-def evaluate(a: np.ndarray, step) -> np.ndarray:
+def evaluate(a: np.ndarray, step: Any) -> np.ndarray:
     """Value of the series at a distance ``step`` from its centre (Horner)."""
     a = np.asarray(a)
     out = a[-1]

@@ -88,7 +88,7 @@ def test_a_curved_grid_gives_the_same_modes_to_second_order():
 def test_operators_are_free_of_frequency_and_linear_in_permittivity():
     layout = box(materials.constant(2.0), materials.constant(1.0), 0.6, 0.5, 0.2, EVEN)
     operators: Operators = layout.operators(layout.grid(Margins(), 1), layout.boundary)
-    one = operators.pencil(0.0, np.array([4.0, 1.0]))
-    two = operators.pencil(3.0, np.array([4.0, 1.0]))
-    across = 4.0 * operators.media[0].across + operators.media[1].across
+    across, along = operators.masses(np.array([4.0, 1.0]))
+    one, two = (operators.pencil(k0, across, along) for k0 in (0.0, 3.0))
+    assert abs(across - 4.0 * operators.media[0].across - operators.media[1].across).max() < 1e-12
     assert abs(two - one - 9.0 * across).max() < 1e-9

@@ -70,7 +70,7 @@ def test_betas_agree_with_the_curve_and_with_the_mode(curve, modes):
 def test_taper_rises_with_width_and_keeps_its_reasons():
     said = []
     table = taper_table(SECTION, [0.5, 1.0, 1.6], 1.55, "TE1", progress=said.append)
-    assert np.isnan(table.n_eff[0]) and "no mode TE1" in table.reason[0]
+    assert np.isnan(table.n_eff[0]) and "no guided mode TE1" in table.reason[0]
     assert table.failed >= 1 and len(said) == 3
     assert np.isfinite(table.n_eff[2]) and table.reason[2] == ""
     assert np.isnan(table.error["n_eff"][0]) and table.error["n_eff"][2] > 0
