@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import os
 import signal
 import sys
 import traceback
@@ -10,38 +9,26 @@ from typing import Any
 
 import click
 
-from materials.common.errors import DesignFileError, IdlermapError, StorageError
-from materials.common.results import make_provenance
+from materials.common.errors import DesignFileError, IdlermapError, SolverError
+from materials.common.files import check_free
+from materials.common.results import package_version
 from phasematch.cli_export import export
 from phasematch.cli_materials import materials_group
 from phasematch.cli_parts import (
-    BUG,
     DESIGN,
-    INTERRUPTED,
-    USAGE,
     check_file,
     design_argument,
-    exit_code,
+    finish,
     notes,
     out,
     output_options,
-    progress,
     read,
+    replace_option,
     save,
     say,
+    working,
 )
-
-EXIT_CODES = """
-\b
-Exit codes:
-  0    good
-  1    a bug of Idlermap's own
-  2    wrong usage, or problems in the design file (one line each)
-  3    finished, but some points have no value
-  4    an input out of range, or no guided mode
-  5    a file or folder could not be read or written
-  130  interrupted
-"""
+from phasematch.exit_codes import FAULT, INTERRUPTED, exit_code, help_text
 
 COMPLETION = """
 \b
@@ -54,10 +41,10 @@ Shell completion, for bash (likewise zsh, fish), in the shell's start-up file:
 
 
 @click.group(
-    epilog=EXIT_CODES + COMPLETION,
+    epilog=f"{help_text()}\n{COMPLETION}",
     context_settings={"help_option_names": ["-h", "--help"], "max_content_width": 80},
 )
-@click.version_option(make_provenance().version, prog_name="idlermap")
+@click.version_option(package_version(), prog_name="idlermap")
 def command() -> None:
     """Phase matching and resonance alignment for four-wave mixing on chips.
 
@@ -69,25 +56,26 @@ def command() -> None:
 @command.command(short_help="Run a design: results and figures into a folder.")
 @design_argument
 @click.option("-o", "--output", "folder", required=True, help="Folder for the results.")
-@click.option("--replace", is_flag=True, help="Replace the results in a folder that holds some.")
-def run(design: str, changes: tuple[str, ...], folder: str, replace: bool) -> None:
+@replace_option("Replace the results in a folder that holds some.")
+def run(design: str, changes: tuple[str, ...], folder: str, replace: bool) -> int:
     """Run a design: tables, maps and figures into a folder, a summary on stdout."""
     from phasematch.report import show, summary
     from phasematch.study import run_design
 
     checked = read(design, changes)
-    with progress() as tell:
+    with working() as tell:
         outcome = run_design(checked, folder, replace=replace, progress=tell)
     show(out(), *summary(outcome))
     notes(outcome.notes)
     say(f"results are in {folder}")
+    return finish(*outcome.results)
 
 
 @command.command()
 @design_argument
 @click.option("--wavelength-um", type=float, help="Instead of mode.wavelength_um.")
 @click.option("--count", type=int, help="Most modes to list, instead of mode.count.")
-@output_options
+@output_options("Also write the result here (.csv or .h5).")
 def modes(
     design: str,
     changes: tuple[str, ...],
@@ -95,7 +83,7 @@ def modes(
     count: int | None,
     output: str | None,
     replace: bool,
-) -> None:
+) -> int:
     """List the guided modes at one wavelength."""
     from modesolve.mode import solve_modes
     from modesolve.tables import mode_table
@@ -106,7 +94,7 @@ def modes(
     checked = read(design, changes)
     table = checked.tables.mode
     wavelength = checked.reference_um if wavelength_um is None else wavelength_um
-    with progress() as tell:
+    with working() as tell:
         tell(f"modes at {wavelength:g} um")
         found = solve_modes(
             section_of(checked), wavelength, table.count if count is None else count
@@ -115,31 +103,33 @@ def modes(
     out().print(modes_report(result))
     notes(result.notes)
     save(result, output)
+    return finish(result)
 
 
 @command.command("dispersion", short_help="Dispersion over the band.")
 @design_argument
-@output_options
+@output_options("Also write the result here (.csv or .h5).")
 def dispersion_verb(
     design: str, changes: tuple[str, ...], output: str | None, replace: bool
-) -> None:
+) -> int:
     """Index, group index, D, area and gamma over the band, zero dispersion."""
     from phasematch.report import dispersion_report
     from phasematch.study import curve_table, solve_curve
 
     check_file(output, replace)
     checked = read(design, changes)
-    with progress() as tell:
+    with working() as tell:
         result = curve_table(checked, solve_curve(checked, tell))
     out().print(dispersion_report(result))
     notes(result.notes)
     save(result, output)
+    return finish(result)
 
 
 @command.command(short_help="Conversion band and pair flux of the channel.")
 @design_argument
-@output_options
-def channel(design: str, changes: tuple[str, ...], output: str | None, replace: bool) -> None:
+@output_options("Also write the result here (.csv or .h5).")
+def channel(design: str, changes: tuple[str, ...], output: str | None, replace: bool) -> int:
     """Conversion band and pair flux of the channel; -o writes its map."""
     from phasematch import study
     from phasematch.report import channel_report
@@ -149,17 +139,18 @@ def channel(design: str, changes: tuple[str, ...], output: str | None, replace: 
     table = checked.tables.channel
     if table is None:
         raise study.missing_table(checked, "channel")
-    with progress() as tell:
-        results = study.channel_results(checked, study.solve_curve(checked, tell))
+    with working() as tell:
+        results = study.solve_channel(checked, study.solve_curve(checked, tell))
     out().print(channel_report(table, results.band, results.flux))
     notes(results.notes)
     save(results.map, output)
+    return finish(*results.parts)
 
 
 @command.command(short_help="Which resonance pairs of the ring are aligned.")
 @design_argument
-@output_options
-def ring(design: str, changes: tuple[str, ...], output: str | None, replace: bool) -> None:
+@output_options("Also write the result here (.csv or .h5).")
+def ring(design: str, changes: tuple[str, ...], output: str | None, replace: bool) -> int:
     """Resonance pairs of the ring around its pump: which are aligned, by how much."""
     from phasematch import study
     from phasematch.report import ring_report, show
@@ -169,23 +160,23 @@ def ring(design: str, changes: tuple[str, ...], output: str | None, replace: boo
     table = checked.tables.ring
     if table is None:
         raise study.missing_table(checked, "ring")
-    with progress() as tell:
-        results = study.ring_results(checked, study.solve_curve(checked, tell))
+    with working() as tell:
+        results = study.solve_ring(checked, study.solve_curve(checked, tell))
     show(out(), *ring_report(table, results))
     notes(results.notes)
     save(results.pairs, output)
+    return finish(*results.parts)
 
 
 @command.command()
 @click.argument("file", type=click.Path(dir_okay=False))
-@click.option("--replace", is_flag=True, help="Replace an existing file.")
+@replace_option()
 def new(file: str, replace: bool) -> None:
     """Write a commented design to start from."""
     from materials.common.files import write_text
     from phasematch.starter import starter_text
 
-    if os.path.exists(file) and not replace:
-        raise StorageError(f"{file} exists; give another name, or --replace to replace it")
+    check_free(file, replace=replace)
     write_text(file, starter_text())
     say(f"wrote {file}")
 
@@ -228,17 +219,19 @@ def main(arguments: list[str] | None = None) -> None:
     except DesignFileError as exc:
         for line in exc.args[0]:
             click.echo(line, err=True)
-        sys.exit(USAGE)
+        sys.exit(exit_code(exc))
     except IdlermapError as exc:
         say(str(exc))
+        if isinstance(exc, SolverError):
+            say("please report this, with the design file and the line above")
         sys.exit(exit_code(exc))
     except Exception:
         traceback.print_exc()
         say("this is a bug of Idlermap's own; please report it with the lines above")
-        sys.exit(BUG)
+        sys.exit(FAULT)
     sys.exit(code if isinstance(code, int) else 0)
 
 
 def _stop(number: int, frame: Any) -> None:
-    """Leave by way of the clean-up when asked to terminate."""
-    sys.exit(128 + number)
+    """Leave by way of the clean-up when told to terminate."""
+    raise click.Abort

@@ -2,21 +2,19 @@
 
 from __future__ import annotations
 
-from typing import Any
-
 import click
 import numpy as np
 
-from materials.common.results import Result
+from materials.common.results import FullResult
 from phasematch.cli_parts import (
-    FAILED_POINTS,
     check_file,
     design_argument,
+    finish,
     notes,
-    progress,
+    output_options,
     read,
     save,
-    say,
+    working,
 )
 
 
@@ -28,18 +26,16 @@ def export() -> None:
     """
 
 
-def _target(function: Any) -> Any:
-    file = click.option("-o", "--output", help="File to write (.csv or .h5).")
-    again = click.option("--replace", is_flag=True, help="Replace an existing file.")
-    return file(again(function))
+_target = output_options("File to write (.csv or .h5).")
 
 
-def _hand_over(result: Result, output: str | None) -> None:
-    """The table to its file or to stdout, its notes to stderr."""
+def _hand_over(result: FullResult, output: str | None) -> int:
+    """The table to its file or to stdout, its notes to stderr; gives the exit code."""
     if output is None:
         click.echo(result.csv_text(), nl=False)
-    notes(getattr(result, "notes", ()))
+    notes(result.notes)
     save(result, output)
+    return finish(result)
 
 
 @export.command()
@@ -52,7 +48,7 @@ def curve(
     points: int | None,
     output: str | None,
     replace: bool,
-) -> None:
+) -> int:
     """n_eff, n_g, beta2, D, area and gamma against wavelength."""
     from phasematch.study import curve_table, solve_curve
 
@@ -60,9 +56,9 @@ def curve(
     if points is not None:
         changes = (*changes, f"band.points={points}")
     checked = read(design, changes)
-    with progress() as tell:
+    with working() as tell:
         result = curve_table(checked, solve_curve(checked, tell))
-    _hand_over(result, output)
+    return _hand_over(result, output)
 
 
 @export.command()
@@ -77,7 +73,7 @@ def betas(
     orders: int,
     output: str | None,
     replace: bool,
-) -> None:
+) -> int:
     """beta_k about a pump, in ps^k/km."""
     from modesolve.tables import beta_table
     from phasematch.study import solve_curve
@@ -85,10 +81,10 @@ def betas(
     check_file(output, replace)
     checked = read(design, changes)
     pump = checked.reference_um if pump_um is None else pump_um
-    with progress() as tell:
+    with working() as tell:
         solved = solve_curve(checked, tell)
         result = beta_table(solved, pump, orders=orders, inputs=checked.as_dict())
-    _hand_over(result, output)
+    return _hand_over(result, output)
 
 
 @export.command()
@@ -118,7 +114,7 @@ def taper(
     check_file(output, replace)
     checked = read(design, changes)
     mode = checked.tables.mode
-    with progress() as tell:
+    with working() as tell:
         result = taper_table(
             section_of(checked),
             np.linspace(from_um, to_um, points).round(9).tolist(),
@@ -126,8 +122,4 @@ def taper(
             mode.label,
             progress=tell,
         )
-    _hand_over(result, output)
-    if result.failed:
-        say(f"{result.failed} of {points} widths have no value; the column reason says why")
-        return FAILED_POINTS
-    return 0
+    return _hand_over(result, output)

@@ -1,26 +1,23 @@
-"""What the verbs of the command have in common: options, output, notes, exit codes."""
+"""What the verbs of the command have in common: options, output, notes, the way work ends."""
 
 from __future__ import annotations
 
-import os
 from collections.abc import Callable, Iterator
 from contextlib import contextmanager
 from pathlib import Path
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 import click
 from rich.console import Console
 
-from materials.common.errors import (
-    InputError,
-    NoGuidedMode,
-    OutOfRange,
-    SolverError,
-    StorageError,
-)
+from materials.common.errors import StorageError
+from materials.common.files import check_free
 from materials.common.results import Result
+from phasematch.exit_codes import FAILED_POINTS, GOOD
+from phasematch.reasons import count_failed
 
-BUG, USAGE, FAILED_POINTS, RANGE, STORAGE, INTERRUPTED = 1, 2, 3, 4, 5, 130
+if TYPE_CHECKING:
+    from phasematch.design_file import Design
 
 
 def out() -> Console:
@@ -34,8 +31,20 @@ def say(message: str) -> None:
 
 
 @contextmanager
-def progress() -> Iterator[Callable[[str], None]]:
-    """Report what is being done: a moving line on a terminal, log lines elsewhere."""
+def working() -> Iterator[Callable[[str], None]]:
+    """Do heavy work: one thread of linear algebra, and a function to report progress.
+
+    The sparse solver's dense blocks are small, and more threads only wait for each other.
+    What is reported is a moving line on a terminal, log lines elsewhere.
+    """
+    from threadpoolctl import threadpool_limits
+
+    with threadpool_limits(1, "blas"), _progress() as tell:
+        yield tell
+
+
+@contextmanager
+def _progress() -> Iterator[Callable[[str], None]]:
     console = Console(stderr=True, highlight=False)
     if not console.is_terminal:
         yield say
@@ -63,8 +72,7 @@ def check_file(path: str | None, replace: bool) -> None:
         raise click.BadParameter(f"{path}: the name must end in .csv or .h5", param_hint="-o")
     if not Path(path).absolute().parent.is_dir():
         raise StorageError(f"cannot write {path}: its folder does not exist; make it first")
-    if os.path.exists(path) and not replace:
-        raise StorageError(f"{path} exists; give another name, or --replace to replace it")
+    check_free(path, replace=replace)
 
 
 def save(result: Result, path: str | None) -> None:
@@ -82,6 +90,7 @@ DESIGN = click.Path(exists=True, dir_okay=False)
 
 
 def design_argument(function: Any) -> Any:
+    """The design file and what is laid over it."""
     changes = click.option(
         "--set", "changes", multiple=True, metavar="KEY=VALUE",
         help="Lay a value over the design, e.g. cross_section.width_um=1.7; repeatable.",
@@ -89,26 +98,31 @@ def design_argument(function: Any) -> Any:
     return click.argument("design", type=DESIGN)(changes(function))
 
 
-def output_options(function: Any) -> Any:
-    file = click.option("-o", "--output", help="Also write the result here (.csv or .h5).")
-    again = click.option("--replace", is_flag=True, help="Replace an existing file.")
-    return file(again(function))
+def replace_option(about: str = "Replace an existing file.") -> Any:
+    """--replace, for verbs that write."""
+    return click.option("--replace", is_flag=True, help=about)
 
 
-def read(path: str, changes: tuple[str, ...]) -> Any:
+def output_options(about: str) -> Any:
+    """-o with its meaning, and --replace."""
+
+    def decorate(function: Any) -> Any:
+        return click.option("-o", "--output", help=about)(replace_option()(function))
+
+    return decorate
+
+
+def finish(*results: Any) -> int:
+    """Say how many points failed, and give the exit code that goes with it."""
+    failed = count_failed(results)
+    if not failed:
+        return GOOD
+    say(f"points without a value: {failed}; the column reason says why")
+    return FAILED_POINTS
+
+
+def read(path: str, changes: tuple[str, ...]) -> Design:
+    """The checked design of a file, with changes laid over it."""
     from phasematch.design_file import read_design
 
     return read_design(path, changes)
-
-
-def exit_code(error: BaseException) -> int:
-    """Exit code of an error, as the help text lists them."""
-    if isinstance(error, NoGuidedMode | OutOfRange):
-        return RANGE
-    if isinstance(error, InputError):
-        return USAGE
-    if isinstance(error, SolverError):
-        return FAILED_POINTS
-    if isinstance(error, StorageError):
-        return STORAGE
-    return BUG

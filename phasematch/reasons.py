@@ -2,7 +2,9 @@
 
 The solved band is the user's choice: what lies outside it has no value by design, and no
 verb counts it. Every other missing value does, whatever the verb: a mode that is not
-guided at some width, a medium without n2, a ring at its threshold of oscillation.
+guided at some width, an efficiency without n2, a ring at its threshold of oscillation.
+A whole column that no medium has the data for (gamma in a list of modes) is no such point;
+a note tells of it.
 
 Examples
 --------

@@ -8,10 +8,10 @@ from __future__ import annotations
 
 import os
 import time
-from collections.abc import Callable
+from collections.abc import Callable, Iterable
 from dataclasses import dataclass, replace
 from pathlib import Path
-from typing import TypeVar
+from typing import Any, TypeVar
 
 import numpy as np
 
@@ -19,7 +19,7 @@ import materials
 from materials.common.errors import DesignFileError
 from materials.common.files import write_text
 from materials.common.folders import whole_folder
-from materials.common.results import Provenance, make_provenance
+from materials.common.results import FullResult, Provenance, make_provenance
 from modesolve.cross_section import CrossSection
 from modesolve.curve import DispersionCurve
 from modesolve.dispersion import dispersion
@@ -38,16 +38,7 @@ from phasematch.ring import Ring
 from phasematch.ring_results import DetuningMap, PairRates, PairTable, RingDispersion
 
 Progress = Callable[[str], None]
-ResultType = TypeVar(
-    "ResultType",
-    ChannelMap,
-    ConversionBand,
-    PairFlux,
-    PairTable,
-    DetuningMap,
-    RingDispersion,
-    PairRates,
-)
+ResultType = TypeVar("ResultType", bound=FullResult)
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -59,9 +50,14 @@ class ChannelResults:
     flux: PairFlux
 
     @property
+    def parts(self) -> tuple[FullResult, ...]:
+        """All of them."""
+        return self.map, self.band, self.flux
+
+    @property
     def notes(self) -> tuple[str, ...]:
         """Notes of all parts, once each."""
-        return tuple(dict.fromkeys((*self.map.notes, *self.band.notes, *self.flux.notes)))
+        return _notes(self.parts)
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -74,10 +70,15 @@ class RingResults:
     rates: PairRates | None
 
     @property
+    def parts(self) -> tuple[FullResult, ...]:
+        """All there are."""
+        rates = () if self.rates is None else (self.rates,)
+        return self.pairs, self.detuning, self.dispersion, *rates
+
+    @property
     def notes(self) -> tuple[str, ...]:
         """Notes of all parts, once each."""
-        rates = self.rates.notes if self.rates is not None else ()
-        return tuple(dict.fromkeys((*self.pairs.notes, *self.detuning.notes, *rates)))
+        return _notes(self.parts)
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -94,11 +95,20 @@ class Outcome:
     provenance: Provenance
 
     @property
+    def results(self) -> tuple[Any, ...]:
+        """Every result with numbers in it."""
+        parts = [part.parts for part in (self.channel, self.ring) if part is not None]
+        return (self.modes, self.table, *(result for some in parts for result in some))
+
+    @property
     def notes(self) -> tuple[str, ...]:
         """What to know about the results, once each."""
-        parts = (self.modes, self.table, self.channel, self.ring)
-        found = (note for part in parts if part is not None for note in part.notes)
-        return tuple(dict.fromkeys(found))
+        return _notes(self.results)
+
+
+def _notes(results: Iterable[Any]) -> tuple[str, ...]:
+    """Notes of several results, once each."""
+    return tuple(dict.fromkeys(note for result in results for note in result.notes))
 
 
 def section_of(design: Design) -> CrossSection:
@@ -135,7 +145,7 @@ def curve_table(design: Design, curve: DispersionCurve) -> DispersionTable:
     return dispersion_table(curve, wavelengths, design.as_dict())
 
 
-def channel_results(design: Design, curve: DispersionCurve) -> ChannelResults:
+def solve_channel(design: Design, curve: DispersionCurve) -> ChannelResults:
     """Map, conversion band and pair flux of a design's channel."""
     table = design.tables.channel
     if table is None or table.map_pump_um is None or table.map_signal_um is None:
@@ -150,7 +160,7 @@ def channel_results(design: Design, curve: DispersionCurve) -> ChannelResults:
     )
 
 
-def ring_results(design: Design, curve: DispersionCurve) -> RingResults:
+def solve_ring(design: Design, curve: DispersionCurve) -> RingResults:
     """Pairs, detuning map, D1 to D4 and, with a pump power, pair rates of a design's ring."""
     table = design.tables.ring
     if table is None:
@@ -211,10 +221,10 @@ def solve_design(design: Design, progress: Progress = lambda message: None) -> O
     channel = ring = None
     if tables.channel is not None:
         progress("channel: pump x signal map, conversion band, pair flux")
-        channel = channel_results(design, curve)
+        channel = solve_channel(design, curve)
     if tables.ring is not None:
         progress("ring: resonance pairs and detuning map")
-        ring = ring_results(design, curve)
+        ring = solve_ring(design, curve)
     keys = [m.key for m in section.media]
     return Outcome(
         design=design,

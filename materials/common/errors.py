@@ -16,7 +16,7 @@
     `-- StorageError (OSError)           a file could not be read or written whole
 
 Arguments are positional, so that an error survives pickling from a worker process.
-The command line maps these classes to exit codes (``phasematch.cli``).
+The command line maps these classes to exit codes: ``phasematch.exit_codes``.
 """
 
 from __future__ import annotations

@@ -70,9 +70,9 @@ def whole_file(path: str | os.PathLike[str]) -> Iterator[Path]:
         # created here, not by mkstemp, so that the user's umask decides who may read it
         os.close(os.open(temporary, os.O_CREAT | os.O_EXCL | os.O_WRONLY, 0o666))
         yield temporary
-        _flush(temporary)
+        flush(temporary)
         os.replace(temporary, target)
-        _flush(target.parent)
+        flush(target.parent)
     except StorageError:
         raise
     except OSError as exc:
@@ -82,13 +82,29 @@ def whole_file(path: str | os.PathLike[str]) -> Iterator[Path]:
             temporary.unlink(missing_ok=True)
 
 
-def _flush(path: Path) -> None:
+def flush(path: Path) -> None:
     """Flush a closed file or a folder to the disk."""
     descriptor = os.open(path, os.O_RDONLY)
     try:
         os.fsync(descriptor)
     finally:
         os.close(descriptor)
+
+
+def check_free(path: str | os.PathLike[str], *, replace: bool = False) -> None:
+    """Refuse a file that exists, unless it may be replaced.
+
+    Raises
+    ------
+    StorageError
+    """
+    if os.path.exists(path) and not replace:
+        raise taken(f"{path} exists")
+
+
+def taken(what: str) -> StorageError:
+    """The error of a place that holds something."""
+    return StorageError(f"{what}; give another name, or --replace to replace it")
 
 
 def write_text(path: str | os.PathLike[str], text: str) -> None:

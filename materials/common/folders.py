@@ -15,6 +15,7 @@ from collections.abc import Iterator
 from pathlib import Path
 
 from materials.common.errors import StorageError
+from materials.common.files import flush, taken
 
 #: File in which a run lists the files it wrote, so that replacing deletes no others.
 LISTING = "files.txt"
@@ -45,9 +46,7 @@ def check_target(folder: str | os.PathLike[str], *, replace: bool = False) -> Pa
     if target.exists() and not target.is_dir():
         raise StorageError(f"{folder} is a file; give the name of a folder")
     if target.is_dir() and any(target.iterdir()) and not replace:
-        raise StorageError(
-            f"the output folder {folder} is not empty; give another, or --replace to replace it"
-        )
+        raise taken(f"the output folder {folder} is not empty")
     here = Path.cwd()
     if target == here or target in here.parents:
         raise StorageError(
@@ -116,11 +115,7 @@ def _put_in_place(staging: Path, target: Path) -> None:
     if older is not None:
         _keep_other_files(older, target)
         shutil.rmtree(older, ignore_errors=True)
-    descriptor = os.open(target.parent, os.O_RDONLY)
-    try:
-        os.fsync(descriptor)
-    finally:
-        os.close(descriptor)
+    flush(target.parent)
 
 
 def _keep_other_files(older: Path, target: Path) -> None:

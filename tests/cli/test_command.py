@@ -15,6 +15,7 @@ import pytest
 import xarray
 
 import phasematch
+from materials.common import errors
 from phasematch import cli
 from phasematch.caution import LASER_CAUTION
 
@@ -131,7 +132,7 @@ def test_a_full_folder_is_refused_before_any_work(idlermap, here):
     code, out, err = idlermap("run", "design.toml", "-o", "out")
     assert (code, out) == (cli_codes().STORAGE, "")
     assert err == (
-        "idlermap: the output folder out is not empty; give another, or --replace to replace it\n"
+        "idlermap: the output folder out is not empty; give another name, or --replace to replace it\n"
     )
     arguments = ["run", "design.toml", "-o", "out", "--replace", "--set", 'output.figures="none"']
     assert idlermap(*arguments)[0] == 0
@@ -191,8 +192,8 @@ def test_export_taper_marks_what_failed(idlermap):
     assert code == cli_codes().FAILED_POINTS
     table = pandas.read_csv(io.StringIO(out), comment="#")
     assert table["n_eff"].isna().tolist() == [True, False]
-    assert "no mode TE1" in table["reason"][0]
-    assert "1 of 2 widths have no value" in err
+    assert "no guided mode TE1" in table["reason"][0]
+    assert "points without a value: 1" in err
 
 
 def test_new_check_and_resolved(idlermap):
@@ -258,14 +259,14 @@ def test_version_and_help(idlermap):
 
 
 def cli_codes():
-    from phasematch import cli_parts
+    from phasematch import exit_codes
 
-    return cli_parts
+    return exit_codes
 
 
 def test_codes_are_the_documented_numbers():
     codes = cli_codes()
-    assert (codes.BUG, codes.USAGE, codes.FAILED_POINTS) == (1, 2, 3)
+    assert (codes.FAULT, codes.USAGE, codes.FAILED_POINTS) == (1, 2, 3)
     assert (codes.RANGE, codes.STORAGE, codes.INTERRUPTED) == (4, 5, 130)
 
 
@@ -316,6 +317,50 @@ def test_missing_table_for_a_verb(idlermap):
         assert code == 2 and f"bare.toml: [{verb}]: this table is missing" in err
 
 
+@pytest.mark.parametrize(
+    ("error", "code"),
+    [
+        (errors.NotConverged("a"), 1),
+        (errors.OutsideMaterialRange("a"), 4),
+        (errors.TooCloseToCutoff("a"), 4),
+        (errors.UnknownName("a"), 2),
+        (errors.MissingData("a"), 2),
+        (errors.DesignFileError(("a",)), 2),
+        (errors.StorageError("a"), 5),
+        (KeyboardInterrupt(), 130),
+    ],
+)
+def test_every_error_has_the_code_of_its_nearest_ancestor(idlermap, monkeypatch, error, code):
+    def fail(*arguments):
+        raise error
+
+    monkeypatch.setattr("phasematch.cli.read", fail)
+    found, out, err = idlermap("modes", "design.toml")
+    assert (found, out) == (code, "")
+    assert "Traceback" not in err and len(err.splitlines()) <= 2
+    assert ("please report" in err) == (code == 1)
+
+
+@pytest.mark.parametrize(
+    ("verb", "changes", "code"),
+    [
+        # a core without n2: no gamma, so neither efficiency nor flux; misalignment needs none
+        ("channel", ['cross_section.core="Nb2O5-Lemarchand2013"'], 3),
+        ("run", ['cross_section.core="Nb2O5-Lemarchand2013"'], 3),
+        ("ring", ['cross_section.core="Nb2O5-Lemarchand2013"'], 0),
+        ("ring", ["ring.pump_w=10.0"], 3),  # far above the threshold of oscillation
+        ("ring", ["ring.pairs=500"], 0),  # most lie outside the band, by design
+        ("channel", ["channel.pump_um=1.51"], 0),  # likewise the idlers of some signals
+    ],
+)
+def test_missing_points_give_one_code_from_every_verb(idlermap, here, verb, changes, code):
+    folder = ["-o", "out", "--set", 'output.figures="none"'] if verb == "run" else []
+    sets = [word for change in changes for word in ("--set", change)]
+    found, _, err = idlermap(verb, "design.toml", *folder, *sets)
+    assert found == code, err
+    assert ("points without a value" in err) == (code == 3)
+
+
 def test_a_bug_says_so(idlermap, monkeypatch):
     monkeypatch.setattr("phasematch.cli.read", lambda *a: 1 / 0)
     code, _, err = idlermap("modes", "design.toml")
@@ -323,7 +368,7 @@ def test_a_bug_says_so(idlermap, monkeypatch):
     assert "ZeroDivisionError" in err and "please report" in err
 
 
-@pytest.mark.parametrize(("number", "code"), [(signal.SIGINT, 130), (signal.SIGTERM, 143)])
+@pytest.mark.parametrize(("number", "code"), [(signal.SIGINT, 130), (signal.SIGTERM, 130)])
 def test_interrupted_runs_leave_nothing(here, number, code):
     root = Path(phasematch.__file__).parents[1]
     with subprocess.Popen(

@@ -31,7 +31,7 @@ def test_new_empty_and_nested(tmp_path):
 def test_a_full_folder_is_refused_and_left_alone(tmp_path):
     (tmp_path / "out").mkdir()
     (tmp_path / "out" / "mine.txt").write_text("mine")
-    with pytest.raises(StorageError, match=r"out is not empty; give another, or --replace"):
+    with pytest.raises(StorageError, match=r"out is not empty; give another name, or --replace"):
         write(tmp_path / "out", a="1")
     assert names(tmp_path / "out") == ["mine.txt"]
     assert names(tmp_path) == ["out"]
