@@ -51,18 +51,21 @@ def weak_photons_m2(dbeta_per_m: Any, loss_per_m: Any, length_m: Any) -> WeakPho
     """
     a = np.asarray(loss_per_m, dtype=float) * length_m
     k = np.asarray(dbeta_per_m, dtype=float) * length_m
-    a, k = np.broadcast_arrays(a, k)
-    area = np.square(np.asarray(length_m, dtype=float))
+    known = np.isfinite(a) & np.isfinite(k)
+    # unknown points go through the forms as zeros, so that none of them can warn
+    a, k = np.where(known, a, 0.0), np.where(known, k, 0.0)
+    nothing = np.where(known, 0.0, np.nan)
+    area = np.square(np.asarray(length_m, dtype=float)) + nothing
     falling = np.exp(-a)
     z = a + 1j * k
-    near = np.abs(z) < 1e-150
-    with np.errstate(invalid="ignore"):  # NaN mismatch beyond the band stays NaN
-        ratio = np.where(near, 1.0, -np.expm1(-z) / np.where(near, 1.0, z))
+    size = np.abs(z)
+    near = size < 1e-150
+    ratio = np.where(near, 1.0, -np.expm1(-z) / np.where(near, 1.0, z))
     stimulated = area * falling * np.abs(ratio) ** 2
     half = np.sinc(k / (2.0 * np.pi))
     bracket = _two_parts(a) + falling * (0.5 * (k * half) ** 2 + a * _one_minus_sinc(k))
-    size = np.where(near, 1.0, np.abs(z) ** 2)
-    singles = 2.0 * area * falling * np.where(near, 0.5, bracket / size)
+    size = np.where(near, 1.0, size)
+    singles = 2.0 * area * falling * np.where(near, 0.5, bracket / size / size)
     return WeakPhotons(stimulated, singles, area * falling**2 * half**2)
 
 

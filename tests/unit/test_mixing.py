@@ -140,3 +140,13 @@ def test_frequencies_rounded_over_the_edge_count_as_inside():
     assert not np.any(curve_protocol.inside(c, edges * (1 + np.array([1, -1]) * 1e-9)))
     assert np.all(np.isnan(curve_protocol.gamma_or_nan(c, [short * 0.9, long * 1.1])))
     assert np.all(np.isfinite(curve_protocol.gamma_or_nan(c, [short, 1.55, long])))
+
+
+@pytest.mark.filterwarnings("error")
+def test_unknown_mismatch_is_nan_without_a_warning():
+    unknown = np.array([np.nan, np.inf, -np.inf, 0.0, 5.0])
+    for loss in (0.0, 3.0, 1e4):
+        for numbers in weak_photons_m2(unknown, loss, 0.01):
+            assert np.isnan(numbers).tolist() == [True, True, True, False, False]
+    # far from phase matching nothing overflows on the way to nothing
+    assert all(number < 1e-300 for number in weak_photons_m2(1e200, 1.0, 0.01))
