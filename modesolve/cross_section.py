@@ -21,6 +21,9 @@ __all__ = ["CrossSection"]
 #: Allowed sizes, um.
 SMALLEST_UM, LARGEST_UM = 0.005, 100.0
 
+#: Least distance of a core from the axis of its bend, and the largest radius, um.
+CLOSEST_TO_AXIS_UM, STRAIGHTEST_UM = 0.1, 1e6
+
 #: Temperatures of a chip, degC.
 COLDEST_DEGC, HOTTEST_DEGC = -273.15, 1000.0
 
@@ -52,7 +55,8 @@ class CrossSection:
         Flat films from the core outwards. Those above lie on the plane of the core's
         top face, with the cladding filling in beside the core.
     bend_radius_um : float or None
-        Radius of the core's centre line; None for a straight guide.
+        Radius of the core's centre line, negative to bend the other way (towards
+        positive x); None for a straight guide.
     temperature_degc : float or None
         Temperature of the chip; None leaves every medium at its own table's.
 
@@ -61,8 +65,6 @@ class CrossSection:
     OutOfRange
         A size outside 0.005 to 100 um, a slab as thick as the core, an angle or
         fraction outside its range, NaN.
-    InputError
-        A bend, which this version does not solve.
     MissingData
         A temperature with a medium that has no dn/dT.
 
@@ -136,10 +138,20 @@ class CrossSection:
                 "the core"
             )
         if self.bend_radius_um is not None:
-            raise InputError(
-                f"bend_radius_um = {self.bend_radius_um}: this version solves straight guides; "
-                "leave it out"
+            put(self, "bend_radius_um", self._checked_radius())
+
+    def _checked_radius(self) -> float:
+        radius = _number(self.bend_radius_um, "bend_radius_um", "um")
+        line = self.wall_line()
+        widest = max(line.half_bottom_um, line.half_top_um)
+        least = widest + CLOSEST_TO_AXIS_UM
+        if not least <= abs(radius) <= STRAIGHTEST_UM:
+            raise OutOfRange(
+                f"bend_radius_um = {radius:g} um: allowed {least:g} um (the core must clear the "
+                f"bend's axis by {CLOSEST_TO_AXIS_UM:g} um) to {STRAIGHTEST_UM:g} um, negative to "
+                "bend the other way; leave it out for a straight guide"
             )
+        return radius
 
     def wall_line(self) -> WallLine:
         """The etched wall: half the core's width at the wall's bottom and top."""
@@ -164,7 +176,11 @@ class CrossSection:
         return tuple(medium.at_temperature(self.temperature_degc) for medium in found)
 
     def layout(self) -> Layout:
-        """Axes and media for the solver: half of the section, mirror plane at x = 0."""
+        """Axes and media for the solver.
+
+        A straight guide is solved on half of the section, mirror plane at x = 0; a bent one
+        on the whole.
+        """
         stated = {id(medium): medium for medium in self._stated()}
         number = {key: i for i, key in enumerate(stated)}
         core, cladding = number[id(self.core)], number[id(self.cladding)]
@@ -182,13 +198,18 @@ class CrossSection:
             rows.append((number[id(medium)],) * 2)
             walls.append(walls[-1] + thickness)
         rows.append((cladding, cladding))
+        half = 0.5 * self.width_um
+        straight = self.bend_radius_um is None
+        across = Axis((0.0, half), low="mirror") if straight else Axis((-half, half))
+        columns = (0, 1) if straight else (1, 0, 1)
         return Layout(
-            across=Axis((0.0, 0.5 * self.width_um), low="mirror", high="open"),
+            across=across,
             up=Axis(tuple(walls)),
             media=self.media,
-            fill=tuple(tuple(row[i] for row in rows) for i in (0, 1)),
+            fill=tuple(tuple(row[i] for row in rows) for i in columns),
             core=core,
-            mirror=True,
+            mirror=straight,
+            bend_radius_um=self.bend_radius_um,
             etched_wall=None if self.sidewall_deg == 90.0 else self.wall_line(),
         )
 

@@ -165,6 +165,10 @@ class DispersionCurve(Result):
         """Nonlinear coefficient, 1/(W m); NaN where the core has no n2."""
         return self._figure("gamma_per_w_m", wavelength_um)
 
+    def loss_db_per_cm(self, wavelength_um: Any) -> Any:
+        """Loss, dB/cm."""
+        return self._figure("loss_db_per_cm", wavelength_um)
+
     def te_fraction(self, wavelength_um: Any) -> Any:
         """int |Ex|^2 over int (|Ex|^2 + |Ey|^2)."""
         return self._figure("te_fraction", wavelength_um)

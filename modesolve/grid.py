@@ -99,10 +99,11 @@ class Grid:
         refinement : int
             Multiplies the cells of every segment.
         shape : callable, optional
-            Takes the plain product map to the one wanted (sloped walls).
+            Takes the plain product map to the one wanted (sloped walls, a bend).
         """
-        along_u = across.segments(margins.left, margins.right, refinement)
-        along_v = up.segments(margins.bottom, margins.top, refinement)
+        turn = margins.turn
+        along_u = across.segments(margins.left, margins.right, refinement, turn)
+        along_v = up.segments(margins.bottom, margins.top, refinement, turn)
         chart: CoordinateMap = ProductMap(along_u, along_v)
         if shape is not None:
             chart = shape(ProductMap(along_u, along_v))

@@ -1,5 +1,10 @@
 """Integrals over a mode's fields, as frequency series.
 
+The conjugate field of a lossless guide is (Ex, Ey, -Ez): transverse components real,
+longitudinal one imaginary. It is used in this form throughout, so every integrand is an
+analytic function of the coordinates and an absorbing (complex) outer region gives the same
+value as the real one; with loss the figures are those of the mode and its reverse.
+
 Each is a sum over quarter cells of products of the fields' series, so that areas,
 nonlinear coefficient and mode weights have exact frequency derivatives too. Fields go
 as exp(i(beta z - omega t)); h' is H times the vacuum impedance.
@@ -34,7 +39,7 @@ PER_UM_TO_PER_M = 1e6
 class QuarterFields:
     """Physical field series in the quarter cells, shape (order + 1, n_u, n_v, 2, 2).
 
-    ``y_x``, ``y_y``: the left vector's components; transverse h' is n_eff z x y.
+    ``y_x``, ``y_y``: the left vector's components; transverse h' is n_eff z x y / arc.
     ``area``: physical area of each quarter cell, um^2, and ``arc`` its arc-length factor
     (no order axis).
     """
@@ -62,9 +67,9 @@ def quarter_fields(operators: Operators, jet: Jet) -> QuarterFields:
     )
 
 
-def _modulus(a: np.ndarray) -> np.ndarray:
-    """Series of |a|^2 for a real frequency."""
-    return series.multiply(a, np.conj(a)).real
+def _square(a: np.ndarray) -> np.ndarray:
+    """Series of a^2, no conjugate."""
+    return series.multiply(a, a)
 
 
 def _over_cells(density: np.ndarray) -> np.ndarray:
@@ -81,7 +86,8 @@ def mode_series(layout: Layout, operators: Operators, jet: Jet) -> dict[str, np.
 
     Keys
     ----
-    beta : rad/um
+    beta : rad/um, complex where the guide has loss
+    attenuation_per_um : 2 Im(beta), the power's decay
     te_fraction, core_power_fraction : 1
     intensity_area_um2 : (int |e|^2)^2 / int |e|^4
     power_area_um2 : (int Sz)^2 / int Sz^2
@@ -94,14 +100,14 @@ def mode_series(layout: Layout, operators: Operators, jet: Jet) -> dict[str, np.
     halves = 2.0 if layout.mirror else 1.0
     k0 = series.variable(jet.omega, order) / C_UM_PER_PS
     n_eff = series.divide(jet.beta, k0)
-    size_x, size_y, size_z = _modulus(f.e_x), _modulus(f.e_y), _modulus(f.e_z)
-    intensity = size_x + size_y + size_z
-    power_density = series.multiply(f.e_x, np.conj(f.y_x)) + series.multiply(f.e_y, np.conj(f.y_y))
-    power_density = series.multiply(np.conj(n_eff), power_density).real
+    size_x, size_y, along = _square(f.e_x), _square(f.e_y), _square(f.e_z)
+    intensity = size_x + size_y - along
+    power_density = series.multiply(f.e_x, f.y_x) + series.multiply(f.e_y, f.y_y)
+    power_density = series.multiply(n_eff, power_density) / f.arc  # h' is n_eff z x y / h
     power = _total(power_density * f.area)
     weighted = intensity * f.area * f.arc
-    fourth = series.multiply(intensity, intensity)
-    out = {"beta": jet.beta}
+    fourth = _square(intensity)
+    out = {"attenuation_per_um": 2.0 * np.imag(jet.beta)}
     transverse = _total((size_x + size_y) * f.area)
     out["te_fraction"] = series.divide(_total(size_x * f.area), transverse)
     cells = _over_cells(power_density * f.area)
@@ -117,8 +123,9 @@ def mode_series(layout: Layout, operators: Operators, jet: Jet) -> dict[str, np.
     for i, inside in enumerate(operators.media):
         weight = series.divide(own[:, inside.inside].sum(axis=-1), power)
         out[f"weight_{i}"] = series.multiply(series.sqrt(jet.permittivity[i]), weight)
-    out.update(_nonlinear(layout, operators, jet, f, fourth, power, k0, halves))
-    return out
+    dot_squared = _square(size_x + size_y + along)
+    out.update(_nonlinear(layout, operators, jet, fourth, dot_squared, power, k0, halves))
+    return {"beta": jet.beta, **{key: np.real(value) for key, value in out.items()}}
 
 
 def _squared_over(a: np.ndarray, b: np.ndarray) -> np.ndarray:
@@ -129,24 +136,23 @@ def _nonlinear(
     layout: Layout,
     operators: Operators,
     jet: Jet,
-    f: QuarterFields,
     fourth: np.ndarray,
+    dot_squared: np.ndarray,
     power: np.ndarray,
     k0: np.ndarray,
     halves: float,
 ) -> dict[str, np.ndarray]:
     """gamma and the nonlinear area."""
-    dot = series.multiply(f.e_x, f.e_x) + series.multiply(f.e_y, f.e_y)
-    dot = dot + series.multiply(f.e_z, f.e_z)
-    density = (2.0 * fourth + _modulus(dot)) / 3.0
-    cells = _over_cells(density * f.area * f.arc)
+    density = (2.0 * fourth + dot_squared) / 3.0
+    metric = operators.grid.metric
+    cells = _over_cells(density * QUARTER * metric.det * metric.arc)
     n2 = [medium.n2_m2_per_w for medium in layout.media]
     core_n2 = n2[layout.core]
     # only ratios to the core's n2 enter the area; with no n2 at all the core counts alone
     relative = [
         (v or 0.0) / core_n2 if core_n2 else float(i == layout.core) for i, v in enumerate(n2)
     ]
-    total = np.zeros(k0.shape)
+    total = np.zeros(k0.shape, cells.dtype)
     for share, eps, medium in zip(relative, jet.permittivity, operators.media, strict=True):
         if share:
             total = total + share * series.multiply(eps, cells[:, medium.inside].sum(axis=-1))

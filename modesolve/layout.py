@@ -9,14 +9,22 @@ from __future__ import annotations
 
 from dataclasses import dataclass, field, replace
 from enum import IntEnum
-from functools import partial
 
 import numpy as np
 
 from materials.common.constants import C_UM_PER_PS
 from materials.medium import Medium
 from modesolve.grid import Grid
-from modesolve.maps import EVEN, Axis, Margins, SlopedWalls, WallLine
+from modesolve.maps import (
+    EVEN,
+    Axis,
+    Bend,
+    CoordinateMap,
+    Margins,
+    ProductMap,
+    SlopedWalls,
+    WallLine,
+)
 from modesolve.operators import Boundary, Operators
 
 __all__ = ["SLAB_WIDTH_UM", "Corners", "Layout", "decay_constant"]
@@ -59,6 +67,8 @@ class Layout:
         every integral stands for half the section and both parities are wanted.
     etched_wall : WallLine or None
         Line of the etched wall where it is not vertical.
+    bend_radius_um : float or None
+        Radius of the line x = 0; None for a straight guide.
     """
 
     across: Axis
@@ -69,13 +79,25 @@ class Layout:
     boundary: Boundary = field(default_factory=Boundary)
     mirror: bool = False
     etched_wall: WallLine | None = None
+    bend_radius_um: float | None = None
 
     def grid(self, margins: Margins, refinement: int) -> Grid:
         """The grid of one refinement."""
-        shape = None
+        return Grid.build(self.across, self.up, margins, refinement, self._shaped)
+
+    def _shaped(self, chart: ProductMap) -> CoordinateMap:
+        """The plain map with this section's slopes and bend."""
+        out: CoordinateMap = chart
         if self.etched_wall is not None:
-            shape = partial(SlopedWalls, half_width_um=self.across.walls[-1], line=self.etched_wall)
-        return Grid.build(self.across, self.up, margins, refinement, shape)
+            out = SlopedWalls(chart, self.across.walls[-1], self.etched_wall)
+        if self.bend_radius_um is not None:
+            out = Bend(out, self.bend_radius_um)
+        return out
+
+    @property
+    def outward(self) -> str:
+        """The side that points away from the bend's axis."""
+        return "left" if (self.bend_radius_um or 0.0) < 0.0 else "right"
 
     def operators(self, grid: Grid, boundary: Boundary) -> Operators:
         """Matrices on a grid of this layout."""
@@ -133,7 +155,12 @@ class Layout:
         """The stack of column ``index``, uniform across: a slab one cell wide."""
         across = Axis((0.0, SLAB_WIDTH_UM), "wall", "wall", uniform=True, grading=EVEN)
         return replace(
-            self, across=across, fill=(self.fill[index],), mirror=False, etched_wall=None
+            self,
+            across=across,
+            fill=(self.fill[index],),
+            mirror=False,
+            etched_wall=None,
+            bend_radius_um=None,
         )
 
     def side_background(self, side: str, omega: float) -> float:

@@ -8,7 +8,8 @@ walls and nothing is ever averaged across one.
 
 Everything the solver knows of the geometry is where a ``CoordinateMap`` puts the nodes
 and its arc-length factor. `ProductMap` is the plain product of two axes; other shapes
-wrap it: `SlopedWalls` shears the rows of an etched core.
+wrap it: `SlopedWalls` shears the rows of an etched core, `Bend` adds the arc-length
+factor of a bend. Absorbing layers are outer segments whose coordinate turns complex.
 """
 
 from __future__ import annotations
@@ -23,6 +24,7 @@ from scipy.special import betainc
 __all__ = [
     "EVEN",
     "Axis",
+    "Bend",
     "CoordinateMap",
     "Grading",
     "Margins",
@@ -58,12 +60,17 @@ EVEN = Grading(between=1.0, outwards=1.0, far_share=0.0)
 
 @dataclass(frozen=True, slots=True)
 class Margins:
-    """Thickness of the outer segments, um: how far the box reaches beyond the last walls."""
+    """Thickness of the outer segments, um: how far the box reaches beyond the last walls.
+
+    ``turn`` above 0 makes the outer segments absorb: their coordinate turns complex from
+    the wall on, its imaginary part growing as s^4 to ``turn`` times the thickness.
+    """
 
     left: float = 0.0
     right: float = 0.0
     bottom: float = 0.0
     top: float = 0.0
+    turn: float = 0.0
 
 
 @dataclass(frozen=True, slots=True)
@@ -94,13 +101,15 @@ class Axis:
         """Number of segments, outer ones included."""
         return len(self.walls) - 1 + (self.low == "open") + (self.high == "open")
 
-    def segments(self, low_margin: float, high_margin: float, refinement: int) -> list[Segment]:
+    def segments(
+        self, low_margin: float, high_margin: float, refinement: int, turn: float = 0.0
+    ) -> list[Segment]:
         """The segments from low to high, with their cell counts."""
         grading = self.grading
         out: list[Segment] = []
         if self.low == "open":
             outer = grading.cells * refinement
-            out.append(Segment("outer_low", self.walls[0], -low_margin, outer, grading))
+            out.append(Segment("outer_low", self.walls[0], -low_margin, outer, grading, turn))
         for i, (a, b) in enumerate(pairwise(self.walls)):
             mirrored = i == 0 and self.low == "mirror"
             cells = (grading.cells if mirrored else 2 * grading.cells) * refinement
@@ -108,7 +117,7 @@ class Axis:
             out.append(Segment(kind, a, b - a, 1 if self.uniform else cells, grading))
         if self.high == "open":
             outer = grading.cells * refinement
-            out.append(Segment("outer_high", self.walls[-1], high_margin, outer, grading))
+            out.append(Segment("outer_high", self.walls[-1], high_margin, outer, grading, turn))
         return out
 
 
@@ -121,9 +130,14 @@ class Segment:
     length: float
     cells: int
     grading: Grading
+    turn: float = 0.0
 
     def position(self, s: np.ndarray) -> np.ndarray:
-        """Physical coordinate, um; ``start`` is the segment's wall, s = 0 its low end."""
+        """Coordinate, um; ``start`` is the segment's wall, s = 0 its low end.
+
+        Waves go as exp(+i k x) outwards, so a positive imaginary part along the outward
+        direction makes them die away.
+        """
         q = self.grading.between
         if self.kind == "inner":
             return self.start + self.length * betainc(q, q, s)
@@ -131,7 +145,10 @@ class Segment:
             return self.start + self.length * (2.0 * betainc(q, q, 0.5 * (1.0 + s)) - 1.0)
         t = 1.0 - s if self.kind == "outer_low" else s
         p, a = self.grading.outwards, self.grading.far_share
-        return self.start + self.length * ((1.0 - a) * t**p + a * t**6)
+        outwards = (1.0 - a) * t**p + a * t**6
+        if self.turn == 0.0:
+            return self.start + self.length * outwards
+        return self.start + self.length * (outwards + 1j * self.turn * t**4)
 
 
 class CoordinateMap(Protocol):
@@ -176,7 +193,8 @@ class ProductMap:
 
 def _follow(segments: list[Segment], u: np.ndarray) -> np.ndarray:
     """Position along a chain at logical coordinates ``u`` (cells count from 0)."""
-    position = np.empty_like(u)
+    turned = any(segment.turn for segment in segments)
+    position = np.empty(u.shape, complex if turned else float)
     first = 0
     for i, segment in enumerate(segments):
         last = first + segment.cells
@@ -195,7 +213,7 @@ class WallLine:
     bottom_um, top_um : float
         Heights of the wall's ends.
     half_bottom_um, half_top_um : float
-        Distance of the wall from the mirror plane there.
+        Distance of the wall from the core's middle there.
     """
 
     bottom_um: float
@@ -204,9 +222,9 @@ class WallLine:
     half_top_um: float
 
     def half_width(self, y: np.ndarray) -> np.ndarray:
-        """Distance of the wall from the mirror plane; beyond the ends it stays."""
+        """Distance of the wall from the core's middle; beyond the ends it stays."""
         ends = (self.half_bottom_um, self.half_top_um)
-        return np.interp(y, (self.bottom_um, self.top_um), ends)
+        return np.interp(np.real(y), (self.bottom_um, self.top_um), ends)
 
 
 class SlopedWalls:
@@ -218,7 +236,7 @@ class SlopedWalls:
     Parameters
     ----------
     inner : ProductMap
-        Half of a symmetric section, mirror plane at x = 0.
+        A section symmetric about x = 0, or its half.
     half_width_um : float
         Where ``inner`` has the core's wall.
     line : WallLine
@@ -235,8 +253,36 @@ class SlopedWalls:
         x, y = self._inner.position(u, v)
         wall = self._line.half_width(y)
         stretched = x * (wall / self._half_width)
-        return np.where(x <= self._half_width, stretched, x + (wall - self._half_width)), y
+        shifted = x + np.sign(np.real(x)) * (wall - self._half_width)
+        return np.where(np.abs(np.real(x)) <= self._half_width, stretched, shifted), y
 
     def arc(self, x: np.ndarray) -> np.ndarray:
         """1: the guide is straight."""
         return np.ones_like(x)
+
+
+class Bend:
+    """A map bent about an axis at x = -radius: exact cylindrical coordinates.
+
+    Only the arc-length factor changes, h = 1 + x/R; a negative radius bends the other way.
+
+    Parameters
+    ----------
+    inner : CoordinateMap
+        The same section, straight.
+    radius_um : float
+        Radius of the line x = 0, the core's middle.
+    """
+
+    def __init__(self, inner: CoordinateMap, radius_um: float) -> None:
+        self._inner = inner
+        self._radius = radius_um
+        self.shape = inner.shape
+
+    def position(self, u: np.ndarray, v: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
+        """x and y in um at logical points; ``u`` and ``v`` broadcast."""
+        return self._inner.position(u, v)
+
+    def arc(self, x: np.ndarray) -> np.ndarray:
+        """h = 1 + x/R."""
+        return 1.0 + x / self._radius

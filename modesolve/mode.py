@@ -10,7 +10,7 @@ from typing import Any
 import numpy as np
 
 from materials.common import inputs
-from materials.common.constants import DB_PER_CM_PER_IM_BETA, omega_from_um, um_from_omega
+from materials.common.constants import omega_from_um, um_from_omega
 from materials.common.errors import NoGuidedMode
 from materials.common.results import (
     ErrorBars,
@@ -60,7 +60,7 @@ class Mode(Result):
     intensity_area_um2: float = declared("intensity_area_um2")
     power_area_um2: float = declared("power_area_um2")
     gamma_per_w_m: float = declared("gamma_per_w_m")
-    loss_db_per_cm: float = quantity("loss", "dB/cm")
+    loss_db_per_cm: float = declared("loss_db_per_cm")
     n_group_from_energy: float = quantity("group index from the energy integrals", "1")
     medium: np.ndarray = quantity("medium", "", ("medium",))
     index_weight: np.ndarray = quantity("dn_eff/dn of the medium", "1", ("medium",))
@@ -76,6 +76,14 @@ class Mode(Result):
     def inputs(self) -> dict[str, Any]:
         """What was asked for, as plain values."""
         return {**self.section.describe(), "wavelength_um": self.wavelength_um}
+
+    @property
+    def loss_db_per_90deg(self) -> float:
+        """Loss of a quarter turn, dB; NaN in a straight guide."""
+        radius = self.section.bend_radius_um
+        if radius is None:
+            return math.nan
+        return self.loss_db_per_cm * abs(radius) * 1e-4 * 0.5 * math.pi
 
     def fields(self) -> FieldMap:
         """Electric field over the whole section, on the cell centres of the finest grid."""
@@ -180,7 +188,6 @@ def mode_from(
         label=label,
         wavelength_um=wavelength,
         **dict(zip(FIGURES, figures(resolved.values).tolist(), strict=True)),
-        loss_db_per_cm=_loss(resolved.values),
         n_group_from_energy=float(group @ weights(resolved.values)),
         medium=frozen_array([medium.key for medium in layout.media]),
         index_weight=frozen_array(weights(resolved.values)),
@@ -191,7 +198,6 @@ def mode_from(
         error=ErrorBars(
             dict(zip(FIGURES, resolved.bar(figures).tolist(), strict=True)),
             wavelength_um=0.0,
-            loss_db_per_cm=resolved.bar(_loss),
             index_weight=resolved.bar(weights),
             n_group_from_energy=resolved.bar(lambda values: group @ weights(values)),
         ),
@@ -208,11 +214,6 @@ def mode_from(
 def _derivative(values: dict[str, np.ndarray], key: str, order: int) -> float:
     """d^k/domega^k at the centre of a series."""
     return math.factorial(order) * values[key][order]
-
-
-def _loss(values: dict[str, np.ndarray]) -> float:
-    """Power loss in dB/cm: 2 Im(beta) as decibels."""
-    return DB_PER_CM_PER_IM_BETA * float(np.imag(values["beta"][0]))
 
 
 def section_notes(layout: Layout) -> tuple[str, ...]:

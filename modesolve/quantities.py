@@ -15,6 +15,7 @@ from typing import Any
 
 from materials.common.constants import (
     C_UM_PER_PS,
+    DB_PER_CM_PER_IM_BETA,
     PER_UM_TO_PER_KM,
     dispersion_from_beta2,
     um_from_omega,
@@ -54,6 +55,11 @@ def _integral(key: str) -> Callable[[Any, Derivative], Any]:
     return lambda omega, d: d(key, 0)
 
 
+def _loss(omega: Any, d: Derivative) -> Any:
+    """10 log10(e) dB times 2 Im(beta) times 1e4 um a cm."""
+    return 0.5 * DB_PER_CM_PER_IM_BETA * d("attenuation_per_um", 0)
+
+
 def _dispersion(omega: Any, d: Derivative) -> Any:
     return dispersion_from_beta2(PER_UM_TO_PER_KM * d("beta", 2), um_from_omega(omega))
 
@@ -69,6 +75,7 @@ FIGURES: dict[str, Figure] = {
     "intensity_area_um2": Figure("intensity-form area", "um2", _integral("intensity_area_um2")),
     "power_area_um2": Figure("power-form area", "um2", _integral("power_area_um2")),
     "gamma_per_w_m": Figure("nonlinear coefficient", "1/(W m)", _integral("gamma_per_w_m")),
+    "loss_db_per_cm": Figure("loss", "dB/cm", _loss),
     "te_fraction": Figure("TE fraction", "1", _integral("te_fraction")),
     "core_power_fraction": Figure("power in the core", "1", _integral("core_power_fraction")),
 }

@@ -28,7 +28,7 @@ from materials.common import series
 from materials.common.alternates import Alternate, error_bar
 from materials.common.constants import C_UM_PER_PS
 from materials.common.errors import InputError, NoGuidedMode, NotConverged
-from modesolve.eigen import Factorisation, Pencil, RawMode, nearest_modes, polish
+from modesolve.eigen import Factorisation, Pencil, RawMode, polish
 from modesolve.integrals import mode_series
 from modesolve.jets import Jet, mode_jet
 from modesolve.layout import Corners, Layout
@@ -36,7 +36,6 @@ from modesolve.maps import Margins
 from modesolve.operators import Boundary, Operators
 from modesolve.seeds import (
     ABOVE,
-    SEARCHES,
     Seed,
     make_seed,
     margins_for,
@@ -64,6 +63,9 @@ WALL_LEVEL = 2
 
 #: Relative rounding floor of beta; order k of its series is less exact by (4/omega)^k.
 ROUNDING = 2e-12
+
+#: Relative distance of the shift from the eigenvalue where the usual one is too far.
+CLOSER = 1e-6
 
 #: Least distance of an estimated index from the cut-off when margins are sized.
 LEAST_STEP = 1.2e-3
@@ -244,13 +246,13 @@ class _Climb:
     def _settle(self, refinement: int) -> Margins:
         """Margins from the decay at the index that the coarsest grid itself gives."""
         for _ in range(2):
-            margins = margins_for(self.backgrounds, self.omega, self._sized())
+            margins = margins_for(self.layout, self.backgrounds, self.omega, self._sized())
             pencil = self._pencil(margins, refinement, self.seed.boundary)
             shift = (self.k0 * self._sized()) ** 2 * ABOVE
             mode, _, _ = recognise(pencil, shift, self.seed, refinement)
             self.factorisations += pencil.factorisations
             self.seed = make_seed(pencil.operators, mode, self.k0, self.seed.boundary, refinement)
-        return margins_for(self.backgrounds, self.omega, self._sized())
+        return margins_for(self.layout, self.backgrounds, self.omega, self._sized())
 
     def _sized(self) -> float:
         """The index that margins are sized for."""
@@ -285,7 +287,7 @@ class _Climb:
                 f"eigenpair residual {mode.residual:.1e} on the grid m = {refinement} "
                 f"(allowed {allowed:.0e}); change the wavelength or geometry slightly"
             )
-        jet = self._jet(pencil, factorisation, mode, shift, others)
+        jet = self._jet(pencil, factorisation, mode, others)
         self.factorisations += pencil.factorisations
         self.residual = max(self.residual, mode.residual)
         self.jet_residual = max(self.jet_residual, jet.residual)
@@ -299,17 +301,16 @@ class _Climb:
         pencil: Pencil,
         factorisation: Factorisation,
         mode: RawMode,
-        shift: float,
         others: list[RawMode],
     ) -> Jet:
-        """Frequency series; where another mode is too near for the iteration, name it first."""
+        """Frequency series; where another mode is too near, from a shift still closer."""
         try:
             return mode_jet(pencil, factorisation, mode, self.omega, self.permittivity, others)
         except NotConverged:
-            count, basis = SEARCHES[1]
-            near = nearest_modes(pencil, factorisation, shift, count, basis=basis)
-            near.sort(key=lambda m: abs(m.eigenvalue - mode.eigenvalue))
-            return mode_jet(pencil, factorisation, mode, self.omega, self.permittivity, near[1:])
+            closer = mode.eigenvalue * (1.0 + CLOSER)
+            factorisation = pencil.factorise(closer)
+            mode = polish(pencil, factorisation, mode)
+            return mode_jet(pencil, factorisation, mode, self.omega, self.permittivity, others)
 
     def _wall_step(self) -> dict[str, np.ndarray]:
         """What changes when the outer walls turn from electric to magnetic.

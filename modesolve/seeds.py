@@ -34,6 +34,16 @@ __all__ = [
 MARGIN_DECAYS = 11.0
 WIDEST_MARGIN_UM = 50.0
 
+#: How the outer coordinates of a bend turn complex, by how faint the field is where it
+#: begins to travel away, exp(-tunnelled): share of the thickness that goes into the
+#: imaginary, and wavelengths in the background beyond the turning point. A strong turn
+#: takes a strong wave in; a faint one is told better from the tail of the mode by a weak
+#: turn. Beyond the last bound nothing is lost that could be seen, and all stays real.
+ABSORBERS = ((15.0, 0.6, 4.0), (30.0, 0.3, 2.0))
+
+#: Share of the way to the bend's axis that the inward margin may take.
+INWARD_SHARE = 0.8
+
 #: Modes sought near the shift and Krylov basis, widened until the mode is recognised. The
 #: shift is so close that the first search takes nine solves.
 SEARCHES = ((1, 8), (4, 20), (16, 40))
@@ -49,6 +59,9 @@ LEAST_OVERLAP = 0.7
 #: not tell a guided mode from a mode of the numerical box. Below the cut-off a candidate
 #: must have a share of its field between the walls to be worth a ladder.
 COARSE_SLACK, NEAR_CUTOFF, LEAST_INNER_SHARE = 0.03, 0.08, 0.1
+
+#: Share of its field that a mode of a leaking bend must have between the walls.
+LEAST_BENT_SHARE = 0.3
 
 #: Grids of the slab problem beside a core; their Richardson value is good to about 1e-5.
 STACK_GRIDS = (4, 8)
@@ -81,7 +94,9 @@ def fingerprint(operators: Operators, right: np.ndarray, refinement: int) -> np.
     Grids of one layout have the same logical segments, so a block of m x m cells of the
     grid m covers the same logical square on each of them; a mode is recognised by it.
     """
-    area = np.sqrt(np.abs(operators.grid.metric.det))
+    det = operators.grid.metric.det
+    # in an absorbing outer region the field depends on how far its coordinate turns
+    area = np.sqrt(np.abs(det)) * (np.imag(det) == 0.0)
     parts = []
     n_u, n_v = operators.topology.shape
     rows = _blocks(n_u, refinement)
@@ -184,15 +199,21 @@ def near_cutoff(layout: Layout, omega: float, n_eff: float, cutoff: float) -> bo
     return n_eff < cutoff + NEAR_CUTOFF * (float(layout.indices(omega).max()) - cutoff)
 
 
-def margins_for(backgrounds: dict[str, float], omega: float, n_eff: float) -> Margins:
+def margins_for(
+    layout: Layout, backgrounds: dict[str, float], omega: float, n_eff: float
+) -> Margins:
     """Margins wide enough for the field of index ``n_eff`` to die away.
+
+    In a bend the field beyond x_c = R (n_eff/n - 1) travels away again: the outward margin
+    then reaches past x_c and the outer coordinates turn complex, unless the field is so
+    faint there that nothing is lost; the margin inwards ends before the axis.
 
     Raises
     ------
     TooCloseToCutoff
         When a margin would exceed ``WIDEST_MARGIN_UM``.
     """
-    out = {}
+    out: dict[str, float] = {}
     for side, background in backgrounds.items():
         gamma = decay_constant(omega, n_eff, background)
         if gamma * WIDEST_MARGIN_UM < MARGIN_DECAYS:
@@ -203,6 +224,30 @@ def margins_for(backgrounds: dict[str, float], omega: float, n_eff: float) -> Ma
                 "or use a shorter wavelength"
             )
         out[side] = MARGIN_DECAYS / gamma
+    if layout.bend_radius_um is not None:
+        return _bent_margins(layout, out, backgrounds[layout.outward], omega, n_eff)
+    return Margins(**out)
+
+
+def _bent_margins(
+    layout: Layout, straight: dict[str, float], background: float, omega: float, n_eff: float
+) -> Margins:
+    """Margins of a bend from those of the straight guide."""
+    radius = abs(layout.bend_radius_um or 0.0)
+    half = layout.across.walls[-1]
+    inward = "left" if layout.outward == "right" else "right"
+    out = dict(straight)
+    out[inward] = min(out[inward], INWARD_SHARE * (radius - half))
+    turning = max(radius * (n_eff / background - 1.0) - half, 0.0)
+    x = np.linspace(0.0, turning, 201)
+    local = n_eff / (1.0 + (half + x) / radius)
+    decay = np.sqrt(np.maximum(local**2 - background**2, 0.0))
+    tunnelled = 2.0 * omega / C_UM_PER_PS * float(np.trapezoid(decay, x))
+    wavelength = 2.0 * np.pi * C_UM_PER_PS / omega / background
+    for bound, turn, waves in ABSORBERS:
+        if tunnelled < bound:
+            out[layout.outward] = float(turning + waves * wavelength)
+            return Margins(**out, turn=turn)
     return Margins(**out)
 
 
@@ -225,15 +270,21 @@ def find_seeds(
     k0 = omega / C_UM_PER_PS
     slack = COARSE_SLACK * (top - cutoff)
     reach = cutoff + max(slack, 2e-3)
-    margins = Margins(
-        **{
-            side: min(MARGIN_DECAYS / decay_constant(omega, reach, cutoff), WIDEST_MARGIN_UM)
-            for side in layout.open_sides()
-        }
-    )
+    if layout.bend_radius_um is None:
+        margins = Margins(
+            **{
+                side: min(MARGIN_DECAYS / decay_constant(omega, reach, cutoff), WIDEST_MARGIN_UM)
+                for side in layout.open_sides()
+            }
+        )
+    else:
+        middle = 0.5 * (cutoff + top)
+        margins = margins_for(layout, side_backgrounds(layout, omega), omega, middle)
     grid = layout.grid(margins, refinement)
     permittivity = layout.permittivity(omega, 0)[:, 0]
-    shift = (k0 * top) ** 2
+    # in a bend a mode may hug the outer wall, with an index above the core's own
+    crest = top * (1.0 + layout.across.walls[-1] / abs(layout.bend_radius_um or np.inf))
+    shift = (k0 * crest) ** 2
     seeds = []
     for boundary in layout.parities():
         operators = layout.operators(grid, boundary)
@@ -241,7 +292,9 @@ def find_seeds(
         inner = layout.inner_cells(grid)
         for mode in nearest_modes(pencil, pencil.factorise(shift), shift, count + 3):
             seed = make_seed(operators, mode, k0, boundary, refinement)
-            bound = field_share(operators, mode.right, inner) > LEAST_INNER_SHARE
-            if seed.n_eff > (cutoff - slack if bound else cutoff):
+            share = field_share(operators, mode.right, inner)
+            if margins.turn and share < LEAST_BENT_SHARE:
+                continue  # a wave of the absorbing region
+            if seed.n_eff > (cutoff - slack if share > LEAST_INNER_SHARE else cutoff):
                 seeds.append(seed)
     return sorted(seeds, key=lambda s: -s.n_eff)

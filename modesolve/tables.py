@@ -37,7 +37,7 @@ class ModeTable(Result):
     dispersion_ps_per_nm_km: np.ndarray = declared("dispersion_ps_per_nm_km", ("mode",))
     gamma_per_w_m: np.ndarray = declared("gamma_per_w_m", ("mode",))
     effective_area_um2: np.ndarray = declared("effective_area_um2", ("mode",))
-    loss_db_per_cm: np.ndarray = quantity("loss", "dB/cm", ("mode",))
+    loss_db_per_cm: np.ndarray = declared("loss_db_per_cm", ("mode",))
     n_group: np.ndarray = declared("n_group", ("mode",))
     beta2_ps2_per_km: np.ndarray = declared("beta2_ps2_per_km", ("mode",))
     beta3_ps3_per_km: np.ndarray = declared("beta3_ps3_per_km", ("mode",))

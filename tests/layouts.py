@@ -31,6 +31,23 @@ def slab(film: Medium, below: Medium, above: Medium, thickness_um: float, kind: 
     )
 
 
+def bent_slab(
+    inside: Medium, film: Medium, outside: Medium, thickness_um: float, rim_um: float, kind: str
+) -> Layout:
+    """A film bent about an axis; ``rim_um`` is the radius of its outer face."""
+    media, (low, core, high) = unique(inside, film, outside)
+    wall = "electric" if kind == "TE" else "magnetic"
+    return Layout(
+        across=Axis((-0.5 * thickness_um, 0.5 * thickness_um)),
+        up=Axis((0.0, SLAB_WIDTH_UM), "wall", "wall", uniform=True, grading=EVEN),
+        media=media,
+        fill=((low,), (core,), (high,)),
+        core=core,
+        boundary=Boundary(bottom=wall, top=wall),
+        bend_radius_um=rim_um - 0.5 * thickness_um,
+    )
+
+
 def box(lower: Medium, upper: Medium, a: float, b: float, d: float, grading: Grading) -> Layout:
     """A perfectly conducting box a x b filled with ``lower`` up to height d."""
     return Layout(
