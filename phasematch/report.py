@@ -17,7 +17,7 @@ from phasematch.caution import LASER_CAUTION
 if TYPE_CHECKING:
     from modesolve.tables import DispersionTable, ModeTable
     from phasematch.channel_results import ConversionBand, PairFlux
-    from phasematch.design_tables import ChannelTable, RingTable
+    from phasematch.design_tables import ChannelKeys, RingKeys
     from phasematch.study import Outcome, RingResults
 
 #: Width of a report, columns.
@@ -100,7 +100,7 @@ def scalar_row(result: Any, name: str, label: str, unit: str) -> tuple[str, str,
     return label, format_number(value, result.error.get(name), most=9), unit
 
 
-def channel_report(table: ChannelTable, band: ConversionBand, flux: PairFlux) -> Group:
+def channel_report(table: ChannelKeys, band: ConversionBand, flux: PairFlux) -> Group:
     """Best conversion, its band and the pair flux of a channel."""
     rows = [
         ("pump", f"{table.pump_um:g}", "um"),
@@ -116,7 +116,7 @@ def channel_report(table: ChannelTable, band: ConversionBand, flux: PairFlux) ->
     return Group(lines, *(Text(f"none: {reason}") for reason in reasons))
 
 
-def ring_report(table: RingTable, results: RingResults, rows: int = 10) -> list[Any]:
+def ring_report(table: RingKeys, results: RingResults, rows: int = 10) -> list[Any]:
     """Resonance, dispersion and linewidth of a ring, then its first pairs."""
     pairs, about, rates = results.pairs, results.dispersion, results.rates
     aligned = _ranges(pairs.mu[pairs.aligned])
