@@ -40,7 +40,7 @@ def test_no_number_is_cut():
     ],
 )
 def test_ranges(numbers, words):
-    assert report._ranges(np.array(numbers, dtype=int)) == words
+    assert report.in_words(np.array(numbers, dtype=int)) == words
 
 
 def test_zero_dispersion_with_its_bar():
