@@ -125,7 +125,7 @@ def ring_report(table: RingKeys, results: RingResults, rows: int = 10) -> list[A
         scalar_row(pairs, "pump_um", "pump resonance", "um"),
         scalar_row(about, "d1_ghz", "D1/2pi (free spectral range)", "GHz"),
         scalar_row(about, "d2_mhz", "D2/2pi", "MHz"),
-        ("loaded linewidth", *_cells(pairs, ["linewidth_mhz"], 0, most=9), "MHz"),
+        ("loaded linewidth", _cells(pairs, ["linewidth_mhz"], 0, most=9)[0], "MHz"),
         ("aligned pairs", f"{int(pairs.aligned.sum())} of {len(pairs.mu)}", aligned),
     ]
     if rates is not None:
