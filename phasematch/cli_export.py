@@ -2,10 +2,11 @@
 
 from __future__ import annotations
 
+from typing import TYPE_CHECKING
+
 import click
 import numpy as np
 
-from materials.common.results import FullResult
 from phasematch.cli_parts import (
     check_file,
     design_argument,
@@ -16,6 +17,9 @@ from phasematch.cli_parts import (
     save,
     working,
 )
+
+if TYPE_CHECKING:
+    from modesolve.tables import BetaTable, DispersionTable, TaperTable
 
 
 @click.group()
@@ -29,7 +33,7 @@ def export() -> None:
 _target = output_options("File to write (.csv or .h5).")
 
 
-def _hand_over(result: FullResult, output: str | None) -> int:
+def _hand_over(result: DispersionTable | BetaTable | TaperTable, output: str | None) -> int:
     """The table to its file or to stdout, its notes to stderr; gives the exit code."""
     if output is None:
         click.echo(result.csv_text(), nl=False)

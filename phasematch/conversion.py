@@ -112,6 +112,47 @@ def find_band(
     return BandEdges(first, last, peak, peak_db if absolute else nan, reason, tuple(notes))
 
 
+def sampled_band(
+    axis: np.ndarray, levels_db: np.ndarray, start: int, drop_db: float
+) -> tuple[float, float]:
+    """The band of `find_band` from samples alone, such as one row of a map.
+
+    Parameters
+    ----------
+    axis, levels_db : ndarray, shape (n,)
+        Where the efficiency was computed, rising, and the efficiency in dB.
+    start : int
+        Index of the sample next to the pump.
+    drop_db : float
+
+    Returns
+    -------
+    low, high : float
+        On the axis, interpolated between samples; NaN for an end that is not among them.
+
+    Examples
+    --------
+    >>> x = np.linspace(-2.0, 2.0, 5)
+    >>> sampled_band(x, -3.0 * np.abs(x), 2, 4.5)
+    (-1.5, 1.5)
+    """
+    values = np.where(np.isnan(levels_db), -np.inf, levels_db)
+    top = _climbed(values, start)
+    level = values[top] - drop_db
+    under = np.flatnonzero(values < level)
+    left, right = under[under < top], under[under > top]
+
+    def crossing(out: int, within: int) -> float:
+        if not np.isfinite(values[[out, within]]).all():
+            return math.nan
+        share = (level - values[out]) / (values[within] - values[out])
+        return float(axis[out] + share * (axis[within] - axis[out]))
+
+    low = crossing(left[-1], left[-1] + 1) if left.size else math.nan
+    high = crossing(right[0], right[0] - 1) if right.size else math.nan
+    return low, high
+
+
 def _climbed(values: np.ndarray, start: int) -> int:
     """Index of the maximum reached uphill from ``start``."""
     here = start

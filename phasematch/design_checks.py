@@ -6,7 +6,7 @@ next problem. Each yields a line ``table.key = value: what is allowed``.
 
 from __future__ import annotations
 
-import math
+import re
 from collections.abc import Callable, Iterator, Mapping
 from typing import Any
 
@@ -14,6 +14,7 @@ import materials
 from materials.common.errors import InputError
 from materials.medium import Medium
 from modesolve import CrossSection
+from phasematch.design_tables import CrossSectionKeys
 
 Values = Mapping[str, Mapping[str, Any]]
 
@@ -28,15 +29,13 @@ def joint_problems(values: Values) -> list[str]:
     """
     checks: tuple[Callable[[Values], Iterator[str]], ...] = (
         _unknown_media,
-        _slab_below_height,
-        _walls_meet,
+        _refused_section,
         _band_order,
         _media_ranges,
         _core_above_cladding,
         _wavelengths_in_band,
     )
-    problems = [line for check in checks for line in check(values)]
-    return problems or list(_refused_section(values))
+    return [line for check in checks for line in check(values)]
 
 
 def _named_media(values: Values) -> Iterator[tuple[str, str]]:
@@ -66,31 +65,6 @@ def _unknown_media(values: Values) -> Iterator[str]:
             yield f'{path} = "{key}": {exc}; "idlermap materials list" shows all'
 
 
-def _slab_below_height(values: Values) -> Iterator[str]:
-    section = values.get("cross_section", {})
-    slab, height = section.get("slab_um"), section.get("height_um")
-    if slab is not None and height is not None and slab >= height:
-        yield (
-            f"cross_section.slab_um = {slab:g}: must be below height_um = {height:g} um, "
-            "the total height of the core film"
-        )
-
-
-def _walls_meet(values: Values) -> Iterator[str]:
-    """A sloped core must keep some width at its top."""
-    section = values.get("cross_section", {})
-    names = ("width_um", "height_um", "slab_um", "sidewall_deg", "width_at")
-    if any(name not in section for name in names):
-        return
-    width, height, slab, angle, at = (section[name] for name in names)
-    top = width - 2 * (1 - at) * (height - slab) / math.tan(math.radians(angle))
-    if top <= 0 < height - slab:
-        yield (
-            f"cross_section.sidewall_deg = {angle:g}: the walls meet below the top of a core "
-            f"{width:g} um wide and {height - slab:g} um deep in its etch; must be nearer to 90"
-        )
-
-
 def _band_order(values: Values) -> Iterator[str]:
     band = values.get("band", {})
     start, end = band.get("from_um"), band.get("to_um")
@@ -99,7 +73,7 @@ def _band_order(values: Values) -> Iterator[str]:
 
 
 def _media_ranges(values: Values) -> Iterator[str]:
-    """Every medium must be known over the whole band, unless extrapolation is asked for."""
+    """Every medium must be known over the whole band, unless the design says to extrapolate."""
     band = values.get("band", {})
     if band.get("extrapolate"):
         return
@@ -171,11 +145,44 @@ def _wavelengths_in_band(values: Values) -> Iterator[str]:
 
 
 def _refused_section(values: Values) -> Iterator[str]:
-    """Whatever else the cross-section itself refuses, once all else is in order."""
+    """Whatever the cross-section itself refuses: its sizes, its walls, its temperature.
+
+    It names one problem at a time, so it is made with each key alone, then, when none of
+    them is wrong, with all. Keys that have a problem of their own are stood in for.
+    """
     section = values.get("cross_section", {})
-    if not {"core", "cladding", "substrate", "width_um", "height_um"} <= set(section):
-        return
+    unknown = {path for path, key in _named_media(values) if _loaded(key) is None}
+    wrong = {re.split(r"[.\[]", path)[1] for path in unknown}
+    base = {k: section[k] if k in section and k not in wrong else v for k, v in _STAND_INS.items()}
+    keys = {
+        k: v
+        for k, v in section.items()
+        if k not in wrong | set(_STAND_INS) and _NEEDS.get(k, set()) <= set(section)
+    }
+    alone = [_refusal({**base, k: v}) for k, v in keys.items()]
+    found = [line for line in alone if line] or [_refusal({**base, **keys})]
+    yield from (line for line in dict.fromkeys(found) if line)
+
+
+#: What stands in for keys that are missing or wrong.
+_STAND_INS = {
+    "core": "vacuum",
+    "cladding": "vacuum",
+    "substrate": "vacuum",
+    "width_um": 1.0,
+    "height_um": 1.0,
+}
+
+#: Sizes without which a key cannot be judged.
+_NEEDS = {"slab_um": {"height_um"}, "sidewall_deg": {"width_um", "height_um"}}
+
+
+def _refusal(section: Mapping[str, Any]) -> str:
+    """Why a cross-section is refused, "" when it is not."""
     try:
         CrossSection(**section).layout()
     except InputError as exc:
-        yield f"cross_section: {exc}"
+        line = str(exc)
+        own = line.partition(" ")[0] in CrossSectionKeys.model_fields
+        return f"cross_section.{line}" if own else f"cross_section: {line}"
+    return ""

@@ -10,13 +10,14 @@ import difflib
 import json
 import os
 import tomllib
-from collections.abc import Iterator, Mapping, Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
 
 from pydantic import ValidationError
 
+from materials.common.constants import middle_um
 from materials.common.errors import DesignFileError, StorageError, UnknownName
 from materials.common.results import Provenance
 from phasematch.design_checks import joint_problems
@@ -41,7 +42,7 @@ class Design:
     @property
     def reference_um(self) -> float:
         """Wavelength at which the modes are listed and labelled, um."""
-        return float(self.tables.mode.wavelength_um or self.tables.band.from_um)
+        return _reference_um(self.tables)
 
     def as_dict(self) -> dict[str, Any]:
         """All keys that have a value, as plain nested mappings."""
@@ -216,13 +217,22 @@ def _shown(value: Any) -> str:
     return shown if len(shown) <= 40 else shown[:37] + "..."
 
 
+def _reference_um(tables: DesignTables) -> float:
+    """Where modes are listed and labelled: as given, else a pump, else the middle of the band."""
+    if tables.mode.wavelength_um is not None:
+        return tables.mode.wavelength_um
+    for table in (tables.ring, tables.channel):
+        if table is not None:
+            return table.pump_um
+    return middle_um(tables.band.from_um, tables.band.to_um)
+
+
 def _with_defaults(tables: DesignTables) -> DesignTables:
     """Fill in the defaults that depend on other keys."""
     band, channel, ring = tables.band, tables.channel, tables.ring
-    pumps: Iterator[float] = (t.pump_um for t in (ring, channel) if t is not None)
-    middle = 0.5 * (band.from_um + band.to_um)
-    reference = tables.mode.wavelength_um or next(pumps, middle)
-    changes: dict[str, Any] = {"mode": tables.mode.model_copy(update={"wavelength_um": reference})}
+    changes: dict[str, Any] = {
+        "mode": tables.mode.model_copy(update={"wavelength_um": _reference_um(tables)})
+    }
     if channel is not None:
         about_pump = (
             max(band.from_um, round(0.98 * channel.pump_um, 6)),

@@ -21,6 +21,8 @@ from matplotlib.figure import Figure
 from matplotlib.ticker import MaxNLocator
 
 from materials.common.files import whole_file
+from materials.common.results import format_number
+from phasematch.conversion import sampled_band
 
 if TYPE_CHECKING:
     from modesolve import Mode
@@ -33,7 +35,7 @@ COLUMN_IN = 3.4
 
 #: Colours that the colour-blind can tell apart (after Okabe and Ito, 2008).
 BLUE, ORANGE, GREY = "#0072B2", "#D55E00", "#6E6E6E"
-_MAP = "cividis"
+COLOUR_MAP = "cividis"
 _NO_VALUE = "#E4E4E4"
 
 _STYLE: Any = {
@@ -48,7 +50,7 @@ _STYLE: Any = {
     "svg.fonttype": "none",
     "pdf.fonttype": 42,
     "axes.formatter.useoffset": False,
-    "image.cmap": _MAP,
+    "image.cmap": COLOUR_MAP,
 }
 
 
@@ -80,6 +82,7 @@ def mode_field_figure(mode: Mode) -> Figure:
     name = "x" if mode.te_fraction >= 0.5 else "y"
     values = np.real(getattr(field, f"e_{name}"))
     values = values * np.sign(values.flat[np.argmax(np.abs(values))])
+    index = format_number(mode.n_eff, mode.error.get("n_eff"), most=9)
     half, low, high = _window(field.x_um, field.y_um, values, section)
     with _figure(min(3.6, 0.75 + 2.3 * (high - low) / (2 * half))) as figure:
         axes = figure.add_subplot()
@@ -96,9 +99,7 @@ def mode_field_figure(mode: Mode) -> Figure:
         _draw_section(axes, section, half)
         axes.set(xlim=(-half, half), ylim=(low, high), aspect="equal")
         axes.set(xlabel="x (µm)", ylabel="y (µm)")
-        axes.set_title(
-            f"{mode.label}, {mode.wavelength_um:.4g} µm, $n_{{\\rm eff}}$ = {mode.n_eff:.5f}"
-        )
+        axes.set_title(f"{mode.label}, {mode.wavelength_um:.4g} µm, $n_{{\\rm eff}}$ = {index}")
         bar = figure.colorbar(shown, ax=axes, shrink=0.8)
         bar.ax.yaxis.set_major_locator(MaxNLocator(2))
         bar.set_label(f"$E_{name}$ / max |E|")
@@ -167,10 +168,14 @@ def dispersion_figure(table: DispersionTable) -> Figure:
             )  # fmt: skip
             last.legend(loc="lower right")
         slope = np.gradient(table.dispersion_ps_per_nm_km, x)
-        for zero in table.zero_dispersion_um:
+        bars = np.broadcast_to(
+            table.error.get("zero_dispersion_um", np.nan), np.shape(table.zero_dispersion_um)
+        )
+        for zero, bar in zip(table.zero_dispersion_um, bars, strict=True):
             last.plot(zero, 0.0, "o", color=ORANGE, markersize=4)
             beside = (5, 5) if np.interp(zero, x, slope) < 0 else (5, -10)  # off the curve
-            last.annotate(f"{zero:.4f} µm", (zero, 0.0), beside, textcoords="offset points")
+            name = f"{format_number(zero, bar, digits=5)} µm"
+            last.annotate(name, (zero, 0.0), beside, textcoords="offset points")
         last.set_xlabel("wavelength (µm)")
         last.set_xlim(x[0], x[-1])
         rows[0].set_title(f"{table.mode}")
@@ -196,7 +201,9 @@ def channel_map_figure(result: ChannelMap, *, span_db: float = 40.0) -> Figure:
             shading="nearest",
             rasterized=True,
         )
+        limits = axes.axis()
         _marked_level(axes, result, values)
+        axes.axis(limits)
         axes.set(xlabel="signal wavelength (µm)", ylabel="pump wavelength (µm)")
         axes.set_title(_channel_title(result))
         bar = figure.colorbar(shown, ax=axes, extend="min")
@@ -214,19 +221,17 @@ def _channel_title(result: ChannelMap) -> str:
 
 
 def _marked_level(axes: Any, result: ChannelMap, values: np.ndarray) -> None:
-    """The line where the efficiency has fallen by 3 dB from the best of the same pump."""
-    if min(values.shape) < 2 or not np.isfinite(values).any():
-        return
-    filled = np.nan_to_num(values, nan=-1e3, neginf=-1e3)
-    axes.contour(
-        result.signal_um,
-        result.pump_um,
-        filled - filled.max(axis=1, keepdims=True),
-        [-3.0],
-        colors="black",
-        linewidths=0.6,
-        linestyles="solid",
-    )
+    """Where the efficiency has fallen by 3 dB within the lobe about each pump.
+
+    A lobe that is phase-matched far from the pump has no part in it, as for
+    `phasematch.Channel.conversion_band`.
+    """
+    edges = [
+        sampled_band(result.signal_um, row, int(np.argmin(np.abs(result.signal_um - pump))), 3.0)
+        for pump, row in zip(result.pump_um, values, strict=True)
+    ]
+    for side in np.transpose(edges):
+        axes.plot(side, result.pump_um, color="black", linewidth=0.6)
 
 
 # ---------------------------------------------------------------- ring
@@ -239,8 +244,13 @@ def ring_figure(pairs: PairTable) -> Figure:
     unit = _linear_part(width)
     with _figure(2.5) as figure:
         axes = figure.add_subplot()
+        ends = pairs.mu[0] - 0.5 - 0.02 * len(width), pairs.mu[-1] + 0.5 + 0.02 * len(width)
+        known = np.isfinite(width)
+        across = np.array([ends[0], *pairs.mu, ends[1]])
+        # held constant beyond the first and last pair, so that the band spans the axes
+        band = np.interp(across, pairs.mu[known], width[known]) if known.any() else 0.0 * across
         axes.fill_between(
-            pairs.mu, -width, width, color=GREY, alpha=0.25, linewidth=0,
+            across, -band, band, color=GREY, alpha=0.25, linewidth=0,
             label="within a linewidth",
         )  # fmt: skip
         axes.axhline(0.0, color=GREY, linewidth=0.6)
@@ -261,9 +271,10 @@ def ring_figure(pairs: PairTable) -> Figure:
                 )  # fmt: skip
         axes.set_yscale("symlog", linthresh=unit, linscale=1.0)
         axes.set_ylim(*_symlog_limits(miss, unit))
-        axes.set(xlabel="pair index µ", ylabel="misalignment (MHz)")
+        axes.set(xlabel="pair index µ", ylabel="misalignment (MHz)", xlim=ends)
         axes.xaxis.set_major_locator(MaxNLocator(6, integer=True))
-        axes.set_title(f"pump {float(pairs.pump_um):.4f} µm")
+        pump = format_number(float(pairs.pump_um), pairs.error.get("pump_um"), digits=5, most=9)
+        axes.set_title(f"pump {pump} µm")
         upwards = np.nanmax(miss, initial=0.0) >= -np.nanmin(miss, initial=0.0)
         axes.legend(loc="lower right" if upwards else "upper right")
     return figure

@@ -17,7 +17,7 @@ from phasematch.caution import LASER_CAUTION
 if TYPE_CHECKING:
     from modesolve.tables import DispersionTable, ModeTable
     from phasematch.channel_results import ConversionBand, PairFlux
-    from phasematch.design_tables import ChannelTable, RingTable
+    from phasematch.design_tables import ChannelKeys, RingKeys
     from phasematch.study import Outcome, RingResults
 
 #: Width of a report, columns.
@@ -42,8 +42,9 @@ def _cells(result: Any, names: Iterable[str], index: int, most: int = 8) -> list
     """Values of some columns of a result at one row, with their bars, ``most`` digits."""
     out = []
     for name in names:
-        bar = result.error.get(name)
-        out.append(format_number(getattr(result, name)[index], _entry(bar, index), most=most))
+        value, bar = getattr(result, name)[index], result.error.get(name)
+        missing = np.isnan(value)
+        out.append("none" if missing else format_number(value, _entry(bar, index), most=most))
     return out
 
 
@@ -100,7 +101,7 @@ def scalar_row(result: Any, name: str, label: str, unit: str) -> tuple[str, str,
     return label, format_number(value, result.error.get(name), most=9), unit
 
 
-def channel_report(table: ChannelTable, band: ConversionBand, flux: PairFlux) -> Group:
+def channel_report(table: ChannelKeys, band: ConversionBand, flux: PairFlux) -> Group:
     """Best conversion, its band and the pair flux of a channel."""
     rows = [
         ("pump", f"{table.pump_um:g}", "um"),
@@ -116,15 +117,15 @@ def channel_report(table: ChannelTable, band: ConversionBand, flux: PairFlux) ->
     return Group(lines, *(Text(f"none: {reason}") for reason in reasons))
 
 
-def ring_report(table: RingTable, results: RingResults, rows: int = 10) -> list[Any]:
+def ring_report(table: RingKeys, results: RingResults, rows: int = 10) -> list[Any]:
     """Resonance, dispersion and linewidth of a ring, then its first pairs."""
     pairs, about, rates = results.pairs, results.dispersion, results.rates
-    aligned = _ranges(pairs.mu[pairs.aligned])
-    lines = [
+    aligned = in_words(pairs.mu[pairs.aligned])
+    lines: list[tuple[str, str, str]] = [
         scalar_row(pairs, "pump_um", "pump resonance", "um"),
         scalar_row(about, "d1_ghz", "D1/2pi (free spectral range)", "GHz"),
         scalar_row(about, "d2_mhz", "D2/2pi", "MHz"),
-        ("loaded linewidth", format_number(pairs.linewidth_mhz[0]), "MHz"),
+        ("loaded linewidth", _cells(pairs, ["linewidth_mhz"], 0, most=9)[0], "MHz"),
         ("aligned pairs", f"{int(pairs.aligned.sum())} of {len(pairs.mu)}", aligned),
     ]
     if rates is not None:
@@ -132,20 +133,21 @@ def ring_report(table: RingTable, results: RingResults, rows: int = 10) -> list[
     columns = ["pair", "signal um", "idler um", "misses MHz", "linewidths", "aligned"]
     listed = _table("Pairs, cold", *columns, *(["pairs 1/s"] if rates is not None else []))
     for i in range(min(rows, len(pairs.mu))):
-        cells = [f"{pairs.signal_um[i]:.5f}", f"{pairs.idler_um[i]:.5f}"]
-        cells += _cells(pairs, ("misalignment_mhz", "misalignment_linewidths"), i, most=7)
+        cells = _cells(pairs, ("signal_um", "idler_um"), i, most=7)
+        cells += _cells(pairs, ("misalignment_mhz", "misalignment_linewidths"), i, most=6)
         cells.append("yes" if pairs.aligned[i] else "no")
         if rates is not None:
-            cells += _cells(rates, ("coincidences_per_s",), i, most=6)
+            cells += _cells(rates, ("coincidences_per_s",), i, most=5)
         listed.add_row(str(pairs.mu[i]), *cells)
     title = (
         f"Ring, radius {table.radius_um:g} um, Q {table.q_intrinsic:g} intrinsic, "
         f"{table.q_coupling:g} coupling"
     )
-    return [value_lines(title, lines), listed]
+    reasons = [] if rates is None else dict.fromkeys(r for r in rates.reason[:rows] if r)
+    return [value_lines(title, lines), Group(listed, *(Text(f"none: {r}") for r in reasons))]
 
 
-def _ranges(numbers: np.ndarray) -> str:
+def in_words(numbers: np.ndarray) -> str:
     """Whole numbers in words: "1 to 17, 19"; cut where it gets long."""
     groups = np.split(numbers, np.flatnonzero(np.diff(numbers) > 1) + 1)
     words = [f"{g[0]}" if len(g) == 1 else f"{g[0]} to {g[-1]}" for g in groups if len(g)]

@@ -438,7 +438,7 @@ class Ring:
             )
         return np.arange(low, high + 1)
 
-    def _pump(self, order: int) -> tuple[dict[str, float], dict[str, float]]:
+    def _pump(self, order: int) -> tuple[dict[str, Any], dict[str, Any]]:
         """Wavelength in um and frequency in THz of a resonance, and their error bars."""
 
         def both(curve: Curve) -> np.ndarray:

@@ -41,20 +41,37 @@ def _lacks_source(item):
 @pytest.fixture
 def run_idlermap(tmp_path):
     """Run the command in a process of its own, in an empty folder; stdout and stderr as text."""
+    return lambda *arguments, environment=None: _run(tmp_path, arguments, environment)
+
+
+@pytest.fixture(scope="session")
+def example_output(tmp_path_factory):
+    """Output folder of a shipped design, by file name; each is run once a session."""
+    folders = {}
+
+    def output(name):
+        if name not in folders:
+            folder = tmp_path_factory.mktemp("example")
+            done = _run(folder, ("run", str(HERE.parent / "examples" / name), "-o", "out"))
+            assert done.returncode == 0, done.stderr
+            folders[name] = folder / "out"
+        return folders[name]
+
+    return output
+
+
+def _run(folder, arguments, environment=None):
     import phasematch
 
-    def run(*arguments, environment=None):
-        return subprocess.run(
-            [sys.executable, "-c", "from phasematch.cli import main; main()", *arguments],
-            cwd=tmp_path,
-            env=child_environment(Path(phasematch.__file__).parents[1], environment),
-            capture_output=True,
-            text=True,
-            check=False,
-            timeout=300,
-        )
-
-    return run
+    return subprocess.run(
+        [sys.executable, "-c", "from phasematch.cli import main; main()", *arguments],
+        cwd=folder,
+        env=child_environment(Path(phasematch.__file__).parents[1], environment),
+        capture_output=True,
+        text=True,
+        check=False,
+        timeout=300,
+    )
 
 
 def child_environment(root, more=None):

@@ -54,7 +54,7 @@ def middle_um(short_um: float, long_um: float) -> float:
 
     Examples
     --------
-    >>> middle_um(1.2, 2.0)
+    >>> round(middle_um(1.2, 2.0), 12)
     1.5
     """
     return 2.0 * short_um * long_um / (short_um + long_um)

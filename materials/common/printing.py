@@ -27,6 +27,8 @@ def format_number(value: Any, bar: float | None = None, *, digits: int = 6, most
     '1.83454380(10)'
     >>> format_number(-1234.567, 23.4)
     '-1230 +- 30'
+    >>> format_number(123456.7, 0.2, most=5)
+    '123460 +- 10'
     >>> format_number(29667950.0, 144.0)
     '2.966795(15)e+07'
     >>> format_number(1.23456e-7, 3e-11)
@@ -42,8 +44,9 @@ def format_number(value: Any, bar: float | None = None, *, digits: int = 6, most
     last = math.floor(math.log10(abs(value))) + 1 - most if value else -308
     units, place = (1, last) if bar <= 10.0**last else _rounded_up(bar)
     size = max(math.floor(math.log10(abs(value))) if value else 0, place)
-    if bar >= 1 and size < 6:
-        return f"{round(value, -place):.{max(0, -place)}f} +- {units * 10.0**place:g}"
+    shown = units * 10.0**place
+    if shown >= 1 and size < 6:
+        return f"{round(value, -place):.{max(0, -place)}f} +- {shown:g}"
     if size >= 6 or (size < -3 and place < -4):  # too large or too small to write out
         return f"{value / 10.0**size:.{size - place}f}({units})e{size:+03d}"
     return f"{value:.{-place}f}({units})"

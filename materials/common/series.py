@@ -107,32 +107,6 @@ def sqrt(a: np.ndarray) -> np.ndarray:
     return power(a, 0.5)
 
 
-def log(a: np.ndarray) -> np.ndarray:
-    """Series of the natural logarithm; a[0] must not vanish."""
-    a = np.asarray(a)
-    out = np.zeros(a.shape, dtype=np.result_type(a, float))
-    out[0] = np.log(a[0])
-    for k in range(1, a.shape[0]):
-        total = k * a[k]
-        for j in range(1, k):
-            total = total - j * out[j] * a[k - j]
-        out[k] = total / (k * a[0])
-    return out
-
-
-def exp(a: np.ndarray) -> np.ndarray:
-    """Series of the exponential."""
-    a = np.asarray(a)
-    out = np.zeros(a.shape, dtype=np.result_type(a, float))
-    out[0] = np.exp(a[0])
-    for k in range(1, a.shape[0]):
-        total = np.zeros_like(out[0])
-        for j in range(1, k + 1):
-            total = total + j * a[j] * out[k - j]
-        out[k] = total / k
-    return out
-
-
 def evaluate(a: np.ndarray, step: Any) -> np.ndarray:
     """Value of the series at a distance ``step`` from its centre (Horner)."""
     a = np.asarray(a)

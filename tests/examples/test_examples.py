@@ -8,6 +8,9 @@ import pandas
 import pytest
 
 EXAMPLES = Path(__file__).parents[2] / "examples"
+#: The design of the README's first command; the others run with --slow.
+QUICK = "nitride_ring.toml"
+
 DESIGNS = sorted(path.name for path in EXAMPLES.glob("*.toml"))
 
 #: File, row chosen by (column, value), column, value, relative tolerance. Own snapshots of
@@ -31,27 +34,27 @@ def test_every_design_is_checked():
 
 
 @pytest.mark.snapshot
-@pytest.mark.parametrize("name", DESIGNS)
-def test_example(run_idlermap, tmp_path, name):
-    done = run_idlermap("run", str(EXAMPLES / name), "-o", "out")
-    assert done.returncode == 0, done.stderr
+@pytest.mark.parametrize(
+    "name",
+    [name if name == QUICK else pytest.param(name, marks=pytest.mark.slow) for name in DESIGNS],
+)
+def test_example(example_output, name):
+    out = example_output(name)
     for file, row, column, expected, tolerance in CHECKS[name]:
-        table = pandas.read_csv(tmp_path / "out" / file, comment="#")
+        table = pandas.read_csv(out / file, comment="#")
         chosen = table if row is None else table[table[row[0]] == row[1]]
         assert len(chosen) == 1
         value, bar = chosen[column].item(), chosen[f"{column}_error"].item()
         assert abs(value - expected) <= tolerance * abs(expected)
         assert 0 < bar < tolerance * abs(expected)
     for figure in ("mode_field", "dispersion", "channel_map"):
-        assert (tmp_path / "out" / f"{figure}.png").stat().st_size > 10_000
+        assert (out / f"{figure}.png").stat().st_size > 10_000
 
 
 README = EXAMPLES.parent / "README.md"
 
 
-def test_readme_lists_what_a_run_writes(run_idlermap, tmp_path):
-    done = run_idlermap("run", str(EXAMPLES / "nitride_ring.toml"), "-o", "out")
-    assert done.returncode == 0, done.stderr
+def test_readme_lists_what_a_run_writes(example_output):
     listed, stem = set(), ""
     for row in re.findall(r"^\| (`.+?) \|", README.read_text(), re.MULTILINE):
         for name in re.findall(r"`([^`]+)`", row):
@@ -60,9 +63,10 @@ def test_readme_lists_what_a_run_writes(run_idlermap, tmp_path):
             else:
                 listed.add(name)
                 stem = name.split(".")[0]
-    assert {path.name for path in (tmp_path / "out").iterdir()} == listed
+    assert {path.name for path in example_output(QUICK).iterdir()} == listed
 
 
+@pytest.mark.slow
 def test_readme_script_runs(capsys):
     text = README.read_text()
     block = text.split("The same from Python:")[1].split("Units are")[0]
@@ -75,12 +79,9 @@ def test_readme_script_runs(capsys):
 
 
 @pytest.mark.snapshot
-def test_aligned_pairs_of_the_nitride_ring(run_idlermap, tmp_path):
+def test_aligned_pairs_of_the_nitride_ring(example_output):
     """13 pairs stay within a linewidth; the misalignment is D2 mu^2 to lowest order."""
-    design = str(EXAMPLES / "nitride_ring.toml")
-    done = run_idlermap("ring", design, "-o", "pairs.csv", "--set", "mode.count=1")
-    assert done.returncode == 0, done.stderr
-    pairs = pandas.read_csv(tmp_path / "pairs.csv", comment="#")
+    pairs = pandas.read_csv(example_output(QUICK) / "ring_pairs.csv", comment="#")
     assert pairs["aligned"].sum() == 13 and pairs["aligned"][:13].all()
     # D4 mu^4/12 is below 1e-4 of it at mu = 2
     assert pairs["misalignment_mhz"][1] == pytest.approx(4 * pairs["misalignment_mhz"][0], rel=1e-3)

@@ -9,7 +9,8 @@ from materials.common.errors import DesignFileError, StorageError, UnknownName
 from materials.common.results import make_provenance
 from modesolve import CrossSection
 from phasematch.design_file import check_design, read_design
-from phasematch.design_tables import TABLES, CrossSectionTable, allowed
+from phasematch.design_tables import TABLES, CrossSectionKeys, allowed
+from phasematch.starter import starter_text
 
 GOOD = {
     "cross_section": {
@@ -71,11 +72,37 @@ def problems(raw):
         ),
         (
             {"cross_section__slab_um": 0.8},
-            ["cross_section.slab_um = 0.8: must be below height_um = 0.8 um"],
+            ["cross_section.slab_um = 0.8 um: allowed 0 up to less than height_um (0.8 um)"],
+        ),
+        (
+            {"cross_section__sidewall_deg": 119.0, "cross_section__width_um": 0.5},
+            ["my.toml: cross_section.sidewall_deg = 119", "is -0.3869 um wide at its narrow end"],
+        ),
+        ({"cross_section__sidewall_deg": 45}, ["= 45: must be a number from 60 to 120 degrees"]),
+        (
+            {"cross_section__bend_radius_um": 50.0},
+            ["my.toml: cross_section.bend_radius_um = 50.0: this version solves straight guides"],
+        ),
+        (
+            {"cross_section__temperature_degc": 30.0, "cross_section__core": "As2S3-Rodney1958"},
+            ["my.toml: cross_section: As2S3-Rodney1958 has no dn/dT"],
         ),
         (
             {"cross_section__layers_below": [["SiO2-Malitson1965", 0.5], ["gold", 0.1]]},
             ['cross_section.layers_below[2][1] = "gold": no medium'],
+        ),
+        (
+            {"cross_section__sidewall_deg": 119.0, "cross_section__width_um": 0.5},
+            ["my.toml: cross_section.sidewall_deg = 119", "is -0.3869 um wide at its narrow end"],
+        ),
+        ({"cross_section__sidewall_deg": 45}, ["= 45: must be a number from 60 to 120 degrees"]),
+        (
+            {"cross_section__bend_radius_um": 50.0},
+            ["my.toml: cross_section.bend_radius_um = 50.0: this version solves straight guides"],
+        ),
+        (
+            {"cross_section__temperature_degc": 30.0, "cross_section__core": "As2S3-Rodney1958"},
+            ["my.toml: cross_section: As2S3-Rodney1958 has no dn/dT"],
         ),
         (
             {"cross_section__layers_below": [["SiO2-Malitson1965", 0.0]]},
@@ -129,6 +156,27 @@ def test_all_problems_at_once():
         assert piece in text
 
 
+def test_problems_of_one_cross_section_do_not_hide_each_other():
+    found = problems(
+        changed(
+            cross_section__core="gold",
+            cross_section__slab_um=0.9,
+            cross_section__sidewall_deg=119.0,
+            cross_section__width_um=0.5,
+            cross_section__bend_radius_um=50.0,
+        )
+    )
+    keys = ("core", "slab_um", "sidewall_deg", "bend_radius_um")
+    assert [line.split()[1] for line in found] == [f"cross_section.{key}" for key in keys]
+
+
+def test_limits_are_those_of_the_solver():
+    for angle in (60.0, 120.0):
+        section = check_design(changed(cross_section__sidewall_deg=angle)).tables.cross_section
+        assert CrossSection(**section.model_dump()).sidewall_deg == angle
+    assert "bend_radius_um" not in starter_text()
+
+
 def test_extrapolation_must_be_asked_for():
     check_design(changed(band__to_um=6.0, band__extrapolate=True))
 
@@ -139,7 +187,8 @@ def test_defaults_follow_from_other_keys():
     assert tables.channel.map_signal_um == (1.2, 2.0)
     assert tables.channel.map_pump_um == pytest.approx((0.98 * 1.54, 1.02 * 1.54))
     assert check_design(changed(ring=None)).tables.mode.wavelength_um == 1.54
-    assert check_design(changed(ring=None, channel=None)).tables.mode.wavelength_um == 1.6
+    alone = check_design(changed(ring=None, channel=None))
+    assert alone.reference_um == pytest.approx(1.5)  # the middle of 1.2 to 2.0 um in frequency
 
 
 def test_resolved_design_runs_again():
@@ -179,7 +228,7 @@ def test_cross_section_keys_are_the_arguments():
     from dataclasses import fields
 
     names = [f.name for f in fields(CrossSection)]
-    assert list(CrossSectionTable.model_fields) == names
+    assert list(CrossSectionKeys.model_fields) == names
 
 
 def test_every_key_says_what_it_is_and_what_is_allowed():

@@ -8,7 +8,7 @@ from modesolve.tables import DispersionTable, ModeTable
 from phasematch import report
 from phasematch.caution import LASER_CAUTION
 from phasematch.channel_results import ConversionBand, PairFlux
-from phasematch.design_tables import ChannelTable
+from phasematch.design_tables import ChannelKeys
 
 
 def mode_table():
@@ -40,7 +40,7 @@ def test_no_number_is_cut():
     ],
 )
 def test_ranges(numbers, words):
-    assert report._ranges(np.array(numbers, dtype=int)) == words
+    assert report.in_words(np.array(numbers, dtype=int)) == words
 
 
 def test_zero_dispersion_with_its_bar():
@@ -68,7 +68,7 @@ def test_missing_edges_are_none_with_the_reason():
         1.55, 0.1, -3.0, 1.56, -20.0, 1.5, nan, nan, 200.0, nan, True, "low edge outside the band"
     )
     flux = PairFlux(1.55, 0.1, "pairs", 1.5e9, 1.0, 190.0, 200.0, "")
-    table = ChannelTable(length_mm=1.0, pump_um=1.55, pump_w=0.1)
+    table = ChannelKeys(length_mm=1.0, pump_um=1.55, pump_w=0.1)
     text = report.as_text(report.channel_report(table, band, flux))
     assert "nan" not in text
     assert text.splitlines()[-1] == "none: low edge outside the band"
