@@ -4,13 +4,13 @@ The rooms are in the order of the work::
 
     cross_section  what a designer states
     layout         the same as axes of walls and media: what is solved
-    maps           coordinate maps: graded axes, sloped walls, margins
+    maps           coordinate maps: graded axes, sloped walls, box
     grid           the logical grid and its metric
     operators      incidence and mass matrices
     eigen          ordering, factorisation, nearest modes, left vectors
     jets           frequency series of a mode
     integrals      areas, gamma and weights as frequency series
-    seeds          candidates, cut-off, margins, recognising a mode
+    seeds          candidates, cut-off, box, recognising a mode
     refine         the ladder of grids and the error bar
     scan           the guided modes of a layout, labelled
     quantities     the figures of a mode: names, units, how each follows

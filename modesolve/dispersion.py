@@ -29,6 +29,7 @@ from materials.common.errors import (
     NoGuidedMode,
     NotConverged,
     OutOfRange,
+    OutsideMaterialRange,
 )
 from materials.common.results import (
     make_provenance,
@@ -37,13 +38,16 @@ from modesolve.band import Band, BandFunction, leja_nodes
 from modesolve.cross_section import CrossSection
 from modesolve.curve import CurveReport, DispersionCurve
 from modesolve.layout import Layout
-from modesolve.maps import Margins
+from modesolve.maps import Box
 from modesolve.mode import section_notes
 from modesolve.refine import LADDER, Resolved, refine
 from modesolve.scan import check_core, checked_wavelength, find_labelled
 from modesolve.seeds import cutoff_index, near_cutoff
 
 __all__ = ["dispersion"]
+
+#: Least width of the band that nodes are laid over, as a share of the frequency.
+NARROWEST_SHARE = 0.04
 
 #: Fewest and most nodes of a curve.
 FEWEST_NODES, MOST_NODES = 3, 9
@@ -99,9 +103,27 @@ def dispersion(
         layout.permittivity(end, 0)  # a medium whose table ends inside the band speaks now
     check_core(layout, omega_from_um(reference))
     start = find_labelled(layout, omega_from_um(reference), mode, ladder)
-    build = _Build(layout, band, start, ladder, progress)
+    build = _Build(layout, _solved_band(layout, band), start, ladder, progress)
     build.run()
-    return build.curve(section, mode, reference, started)
+    return build.curve(section, mode, reference, band, started)
+
+
+def _solved_band(layout: Layout, band: Band) -> Band:
+    """The band that nodes are laid over: a narrow one is widened.
+
+    Derivatives of an interpolant on nodes a fraction f of the frequency apart carry the
+    noise of the nodes over f squared; where a medium's table ends, the band stays.
+    """
+    least = 0.5 * NARROWEST_SHARE * band.centre
+    if band.half_width >= least:
+        return band
+    wide = Band(band.centre - least, band.centre + least)
+    try:
+        for end in (wide.low, wide.high):
+            layout.permittivity(end, 0)
+    except OutsideMaterialRange:
+        return band
+    return wide
 
 
 def _checked_band(from_um: float, to_um: float) -> Band:
@@ -129,7 +151,7 @@ class _Build:
         self.ladder = ladder
         self.progress = progress
         self.start = start
-        self.margins: Margins | None = None
+        self.box: Box | None = None
         self.nodes: list[float] = []
         self.resolved: list[Resolved] = []
         self.held_out = (np.nan, np.nan)
@@ -140,7 +162,7 @@ class _Build:
             node = self._solve(float(self.band.frequency(t)))
             if len(self.nodes) >= FEWEST_NODES:
                 self.held_out = self._surprise(node)
-            self.margins = node.report.margins
+            self.box = node.report.box
             self.nodes.append(t)
             self.resolved.append(node)
             if self.progress is not None:
@@ -156,7 +178,7 @@ class _Build:
         n_eff = min(beta * C_UM_PER_PS / omega, top)
         seed = replace(nearest.seed, n_eff=n_eff)
         try:
-            return refine(self.layout, omega, seed, self.ladder, margins=self.margins)
+            return refine(self.layout, omega, seed, self.ladder, box=self.box)
         except (NoGuidedMode, NotConverged) as exc:
             where = f"the mode can not be followed to {um_from_omega(omega):.4f} um"
             cutoff = cutoff_index(self.layout, omega)
@@ -198,7 +220,12 @@ class _Build:
         return self._functions(self._values(), orders)["n_eff"]
 
     def curve(
-        self, section: CrossSection, mode: str, reference_um: float, started: float
+        self,
+        section: CrossSection,
+        mode: str,
+        reference_um: float,
+        band: Band,
+        started: float,
     ) -> DispersionCurve:
         """The finished curve with its alternates."""
         reports = [r.report for r in self.resolved]
@@ -214,7 +241,7 @@ class _Build:
         made = partial(
             DispersionCurve,
             mode=mode,
-            band=self.band,
+            band=band,
             section=section,
             reference_um=reference_um,
             report=report,
@@ -223,9 +250,7 @@ class _Build:
         versions = []
         for i, first in enumerate(self.resolved[0].alternates):
             values = [r.alternates[i].version for r in self.resolved]
-            versions.append(
-                Alternate(first.name, first.weight, made(functions=self._functions(values)))
-            )
+            versions.append(first._replace(version=made(functions=self._functions(values))))
         shorter = made(functions=self._functions(self._values(), -1))
         versions.append(Alternate("interpolation", 1.0, shorter))
         return made(

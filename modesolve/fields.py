@@ -14,6 +14,9 @@ from modesolve.operators import Boundary, Operators
 
 __all__ = ["FieldMap", "field_map"]
 
+#: Columns that sheared rows are interpolated to.
+COLUMNS = 401
+
 
 @dataclass(frozen=True, slots=True, eq=False, repr=False, kw_only=True)
 class FieldMap(Result):
@@ -33,7 +36,9 @@ def field_map(layout: Layout, operators: Operators, jet: Jet, boundary: Boundary
     """Field of a mode on its finest grid, unfolded at the mirror plane."""
     f = quarter_fields(operators, jet)
     components = [np.mean(part[0], axis=(-2, -1)) for part in (f.e_x, f.e_y, f.e_z)]
-    x, y = operators.grid.centres()
+    x, y = (np.real(part) for part in operators.grid.centres())
+    if layout.etched_wall is not None:
+        components, x = _on_columns(components, x)
     x, y = x[:, 0], y[0, :]
     if layout.mirror:
         # an electric wall leaves the normal component even and the tangential ones odd
@@ -47,3 +52,14 @@ def field_map(layout: Layout, operators: Operators, jet: Jet, boundary: Boundary
     scale = np.sqrt(max(np.max(sum(np.abs(part) ** 2 for part in components)), 1e-300))
     e_x, e_y, e_z = (frozen_array(part / scale) for part in components)
     return FieldMap(x_um=frozen_array(x), y_um=frozen_array(y), e_x=e_x, e_y=e_y, e_z=e_z)
+
+
+def _on_columns(components: list[np.ndarray], x: np.ndarray) -> tuple[list[np.ndarray], np.ndarray]:
+    """Fields of sheared rows interpolated to one set of columns."""
+    low, high = float(x.min(axis=0).max()), float(x.max(axis=0).min())
+    columns = np.linspace(low, high, COLUMNS)
+    out = []
+    for part in components:
+        rows = [np.interp(columns, x[:, j], part[:, j]) for j in range(x.shape[1])]
+        out.append(np.stack(rows, axis=1))
+    return out, np.broadcast_to(columns[:, None], out[0].shape)

@@ -5,10 +5,10 @@ its node positions become a Jacobian in every quarter cell.
 
 Examples
 --------
->>> from modesolve.maps import Axis, Margins, ProductMap
+>>> from modesolve.maps import Axis, Box, ProductMap
 >>> across = Axis((0.0, 0.8), low="mirror", high="open")
 >>> up = Axis((0.0, 0.8), low="open", high="open")
->>> grid = Grid.build(across, up, Margins(right=2.0, bottom=2.0, top=2.0), refinement=2)
+>>> grid = Grid.build(across, up, Box(right=2.0, bottom=2.0, top=2.0), refinement=2)
 >>> grid.shape                      # cells along u and v
 (16, 32)
 """
@@ -20,7 +20,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from modesolve.maps import Axis, CoordinateMap, Margins, ProductMap, Segment
+from modesolve.maps import Axis, Box, CoordinateMap, ProductMap, Segment
 
 __all__ = ["Grid", "Metric"]
 
@@ -86,24 +86,27 @@ class Grid:
         cls,
         across: Axis,
         up: Axis,
-        margins: Margins,
+        box: Box,
         refinement: int,
         shape: Callable[[ProductMap], CoordinateMap] | None = None,
+        finer: tuple[tuple[int, ...], tuple[int, ...]] = ((), ()),
     ) -> Grid:
         """Lay a grid over two axes.
 
         Parameters
         ----------
         across, up : Axis
-        margins : Margins
+        box : Box
         refinement : int
             Multiplies the cells of every segment.
         shape : callable, optional
             Takes the plain product map to the one wanted (sloped walls, a bend).
+        finer : pair of tuple of int
+            Factors for the cells of the inner segments across and up; `Axis.finer`.
         """
-        turn = margins.turn
-        along_u = across.segments(margins.left, margins.right, refinement, turn)
-        along_v = up.segments(margins.bottom, margins.top, refinement, turn)
+        turn = box.turn
+        along_u = across.segments(box.left, box.right, refinement, turn, finer[0])
+        along_v = up.segments(box.bottom, box.top, refinement, turn, finer[1])
         chart: CoordinateMap = ProductMap(along_u, along_v)
         if shape is not None:
             chart = shape(ProductMap(along_u, along_v))

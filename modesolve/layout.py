@@ -19,8 +19,8 @@ from modesolve.maps import (
     EVEN,
     Axis,
     Bend,
+    Box,
     CoordinateMap,
-    Margins,
     ProductMap,
     SlopedWalls,
     WallLine,
@@ -32,6 +32,10 @@ __all__ = ["SLAB_WIDTH_UM", "Corners", "Layout", "decay_constant"]
 #: Width of the single cell that stands for an infinitely wide slab, um. It is narrow, so
 #: that what varies across it lies far below every cut-off.
 SLAB_WIDTH_UM = 0.01
+
+
+#: Factors for the cells of the inner segments, across and up.
+Finer = tuple[tuple[int, ...], tuple[int, ...]]
 
 
 class Corners(IntEnum):
@@ -81,9 +85,15 @@ class Layout:
     etched_wall: WallLine | None = None
     bend_radius_um: float | None = None
 
-    def grid(self, margins: Margins, refinement: int) -> Grid:
+    def grid(self, box: Box, refinement: int, finer: Finer = ((), ())) -> Grid:
         """The grid of one refinement."""
-        return Grid.build(self.across, self.up, margins, refinement, self._shaped)
+        return Grid.build(self.across, self.up, box, refinement, self._shaped, finer)
+
+    def finer(self, omega: float, n_eff: float) -> Finer:
+        """Factors for the cells that a mode of index ``n_eff`` asks for across and up."""
+        top = float(self.indices(omega).max())
+        transverse = omega / C_UM_PER_PS * float(np.sqrt(max(top**2 - n_eff**2, 0.0)))
+        return self.across.finer(transverse), self.up.finer(transverse)
 
     def _shaped(self, chart: ProductMap) -> CoordinateMap:
         """The plain map with this section's slopes and bend."""

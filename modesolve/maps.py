@@ -14,6 +14,7 @@ factor of a bend. Absorbing layers are outer segments whose coordinate turns com
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass, field
 from itertools import pairwise
 from typing import Literal, Protocol
@@ -25,9 +26,9 @@ __all__ = [
     "EVEN",
     "Axis",
     "Bend",
+    "Box",
     "CoordinateMap",
     "Grading",
-    "Margins",
     "ProductMap",
     "Segment",
     "SlopedWalls",
@@ -54,13 +55,16 @@ class Grading:
     cells: int = 4
 
 
+#: Half waves of a field across a full segment that its usual cells carry.
+HALF_WAVES = 4.0
+
 #: Equal cells, for closed boxes and comparisons.
 EVEN = Grading(between=1.0, outwards=1.0, far_share=0.0)
 
 
 @dataclass(frozen=True, slots=True)
-class Margins:
-    """Thickness of the outer segments, um: how far the box reaches beyond the last walls.
+class Box:
+    """How far the box reaches beyond the last walls: thickness of the outer segments, um.
 
     ``turn`` above 0 makes the outer segments absorb: their coordinate turns complex from
     the wall on, its imaginary part growing as s^4 to ``turn`` times the thickness.
@@ -101,18 +105,41 @@ class Axis:
         """Number of segments, outer ones included."""
         return len(self.walls) - 1 + (self.low == "open") + (self.high == "open")
 
+    def finer(self, transverse_per_um: float) -> tuple[int, ...]:
+        """Factor for the cells of each inner segment that a mode's half waves ask for.
+
+        Parameters
+        ----------
+        transverse_per_um : float, rad/um
+            Largest transverse wavenumber of the mode.
+        """
+        if self.uniform:
+            return (1,) * (len(self.walls) - 1)
+        out = []
+        for i, (a, b) in enumerate(pairwise(self.walls)):
+            length = 2.0 * (b - a) if i == 0 and self.low == "mirror" else b - a
+            half_waves = transverse_per_um * length / math.pi
+            out.append(max(1, math.ceil(half_waves / HALF_WAVES)))
+        return tuple(out)
+
     def segments(
-        self, low_margin: float, high_margin: float, refinement: int, turn: float = 0.0
+        self,
+        low_margin: float,
+        high_margin: float,
+        refinement: int,
+        turn: float = 0.0,
+        finer: tuple[int, ...] = (),
     ) -> list[Segment]:
         """The segments from low to high, with their cell counts."""
         grading = self.grading
+        factors = finer or (1,) * (len(self.walls) - 1)
         out: list[Segment] = []
         if self.low == "open":
             outer = grading.cells * refinement
             out.append(Segment("outer_low", self.walls[0], -low_margin, outer, grading, turn))
         for i, (a, b) in enumerate(pairwise(self.walls)):
             mirrored = i == 0 and self.low == "mirror"
-            cells = (grading.cells if mirrored else 2 * grading.cells) * refinement
+            cells = (grading.cells if mirrored else 2 * grading.cells) * refinement * factors[i]
             kind: Kind = "from_mirror" if mirrored else "inner"
             out.append(Segment(kind, a, b - a, 1 if self.uniform else cells, grading))
         if self.high == "open":

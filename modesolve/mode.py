@@ -36,6 +36,10 @@ from modesolve.scan import (
 __all__ = ["Mode", "find_mode", "mode_from", "section_notes", "solve_modes"]
 
 
+#: A TE fraction this near to a half makes a mode hybrid.
+HYBRID = 0.05
+
+
 @dataclass(frozen=True, slots=True, eq=False, repr=False, kw_only=True)
 class Mode(Result):
     """A guided mode with its dispersion, areas and error bars.
@@ -201,7 +205,7 @@ def mode_from(
             index_weight=resolved.bar(weights),
             n_group_from_energy=resolved.bar(lambda values: group @ weights(values)),
         ),
-        notes=(*notes, *section_notes(layout)),
+        notes=(*notes, *_hybrid(float(resolved.values["te_fraction"][0])), *section_notes(layout)),
         provenance=make_provenance(
             [medium.key for medium in layout.media],
             f"ladder {':'.join(map(str, resolved.report.ladder))}, "
@@ -214,6 +218,13 @@ def mode_from(
 def _derivative(values: dict[str, np.ndarray], key: str, order: int) -> float:
     """d^k/domega^k at the centre of a series."""
     return math.factorial(order) * values[key][order]
+
+
+def _hybrid(te_fraction: float) -> tuple[str, ...]:
+    """A word where TE and TM mean little."""
+    if abs(te_fraction - 0.5) > HYBRID:
+        return ()
+    return (f"hybrid mode, TE fraction {te_fraction:.3f}: its label hangs on a small difference",)
 
 
 def section_notes(layout: Layout) -> tuple[str, ...]:

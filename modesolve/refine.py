@@ -27,18 +27,19 @@ import numpy as np
 from materials.common import series
 from materials.common.alternates import Alternate, error_bar
 from materials.common.constants import C_UM_PER_PS
-from materials.common.errors import InputError, NoGuidedMode, NotConverged
+from materials.common.errors import InputError, NoGuidedMode, NotConverged, TooCloseToCutoff
 from modesolve.eigen import Factorisation, Pencil, RawMode, polish
 from modesolve.integrals import mode_series
 from modesolve.jets import Jet, mode_jet
-from modesolve.layout import Corners, Layout
-from modesolve.maps import Margins
+from modesolve.layout import Corners, Layout, decay_constant
+from modesolve.maps import Box
 from modesolve.operators import Boundary, Operators
 from modesolve.seeds import (
     ABOVE,
+    WIDEST_BOX_UM,
     Seed,
+    box_for,
     make_seed,
-    margins_for,
     recognise,
     side_backgrounds,
 )
@@ -67,7 +68,13 @@ ROUNDING = 2e-12
 #: Relative distance of the shift from the eigenvalue where the usual one is too far.
 CLOSER = 1e-6
 
-#: Least distance of an estimated index from the cut-off when margins are sized.
+#: A ladder whose steps in beta^2 have come below this may wobble.
+SMALL_STEP = 1e-7
+
+#: Fewest decay lengths to an outer wall, seen with the resolved index.
+LEAST_DECAYS = 8.0
+
+#: Least distance of an estimated index from the cut-off when the box is sized.
 LEAST_STEP = 1.2e-3
 
 
@@ -80,7 +87,7 @@ class SolveReport:
     factorisations: int
     residual: float
     jet_residual: float
-    margins: Margins
+    box: Box
     truncation: float
     seconds: float
 
@@ -143,7 +150,7 @@ def material_alternates(
         scale = series.multiply(k0, series.divide(values[f"weight_{i}"], 2.0 * index))
         for j, change in enumerate(medium.variation_series(omega, order)):
             moved = {**values, "beta": values["beta"] + series.multiply(scale, change)}
-            out.append(Alternate(f"{medium.key}, constant {j + 1}", 1.0, moved))
+            out.append(Alternate(f"{medium.key}, variation {j + 1}", 1.0, moved, random=True))
     return out
 
 
@@ -153,7 +160,7 @@ def refine(
     seed: Seed,
     ladder: tuple[int, ...] = LADDER,
     order: int = ORDER,
-    margins: Margins | None = None,
+    box: Box | None = None,
 ) -> Resolved:
     """Resolve one mode on a ladder of grids.
 
@@ -167,7 +174,7 @@ def refine(
         first; the first serves the error bar.
     order : int
         Order of the frequency series.
-    margins : Margins, optional
+    box : Box, optional
         Box to solve in; sized from the decay of the field by default. Solves that are to
         be interpolated share one box, so that their errors are one smooth function; that
         a box is too small for one of them shows in the error bar.
@@ -175,7 +182,7 @@ def refine(
     Raises
     ------
     TooCloseToCutoff
-        When the field decays too slowly for the margins allowed.
+        When the field decays too slowly for the box allowed.
     NoGuidedMode
         When the resolved index falls below the cut-off.
     NotConverged
@@ -183,7 +190,7 @@ def refine(
     """
     if len(ladder) < 4 or any(a >= b for a, b in pairwise(ladder)):
         raise InputError(f"ladder = {ladder}: give at least four rising refinements")
-    climb = _Climb(layout, omega, seed, order, margins)
+    climb = _Climb(layout, omega, seed, order, box)
     for refinement in ladder:
         climb.step(refinement)
     return climb.result()
@@ -194,11 +201,11 @@ def solve_level(
     omega: float,
     seed: Seed,
     refinement: int,
-    margins: Margins | None = None,
+    box: Box | None = None,
     order: int = ORDER,
 ) -> Jet:
     """One mode on one grid, without extrapolation: for order tests and cost figures."""
-    return _Climb(layout, omega, seed, order, margins).step(refinement).jet
+    return _Climb(layout, omega, seed, order, box).step(refinement).jet
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -220,7 +227,7 @@ class _Climb:
     """State of one climb of the ladder."""
 
     def __init__(
-        self, layout: Layout, omega: float, seed: Seed, order: int, margins: Margins | None
+        self, layout: Layout, omega: float, seed: Seed, order: int, box: Box | None
     ) -> None:
         self.started = time.perf_counter()
         self.layout = layout
@@ -230,36 +237,43 @@ class _Climb:
         self.backgrounds = side_backgrounds(layout, omega)
         self.cutoff = max(self.backgrounds.values(), default=0.0)
         self.permittivity = layout.permittivity(omega, order)
-        self.margins = margins
+        self.box = box
+        self.own_box = box is None
         self.levels: list[_Level] = []
         self.factorisations = 0
         self.residual = self.jet_residual = 0.0
 
     def step(self, refinement: int) -> _Level:
-        """Solve one more grid; the first one also settles the margins."""
-        if self.margins is None:
-            self.margins = self._settle(refinement)
+        """Solve one more grid; the first one also settles the box."""
+        if self.box is None:
+            self.box = self._settle(refinement)
         level = self._solve(refinement, self._predicted(refinement), self.seed.boundary)
         self.levels.append(level)
         return level
 
-    def _settle(self, refinement: int) -> Margins:
-        """Margins from the decay at the index that the coarsest grid itself gives."""
+    def _settle(self, refinement: int) -> Box:
+        """Box from the decay at the index that the coarsest grid itself gives."""
         for _ in range(2):
-            margins = margins_for(self.layout, self.backgrounds, self.omega, self._sized())
-            pencil = self._pencil(margins, refinement, self.seed.boundary)
+            box = box_for(self.layout, self.backgrounds, self.omega, self._sized())
+            pencil = self._pencil(box, refinement, self.seed.boundary)
             shift = (self.k0 * self._sized()) ** 2 * ABOVE
             mode, _, _ = recognise(pencil, shift, self.seed, refinement)
             self.factorisations += pencil.factorisations
-            self.seed = make_seed(pencil.operators, mode, self.k0, self.seed.boundary, refinement)
-        return margins_for(self.layout, self.backgrounds, self.omega, self._sized())
+            self.seed = self._seen(pencil, mode, refinement)
+        return box_for(self.layout, self.backgrounds, self.omega, self._sized())
 
     def _sized(self) -> float:
-        """The index that margins are sized for."""
+        """The index that the box is sized for."""
         return max(self.seed.n_eff, self.cutoff + LEAST_STEP)
 
-    def _pencil(self, margins: Margins, refinement: int, boundary: Boundary) -> Pencil:
-        operators = self.layout.operators(self.layout.grid(margins, refinement), boundary)
+    def _seen(self, pencil: Pencil, mode: RawMode, refinement: int) -> Seed:
+        """The seed as the mode looks on this grid."""
+        seed = self.seed
+        return make_seed(pencil.operators, mode, self.k0, seed.boundary, refinement, seed.finer)
+
+    def _pencil(self, box: Box, refinement: int, boundary: Boundary) -> Pencil:
+        grid = self.layout.grid(box, refinement, self.seed.finer)
+        operators = self.layout.operators(grid, boundary)
         return Pencil(operators, self.k0, self.permittivity[:, 0])
 
     def _predicted(self, refinement: int) -> float:
@@ -277,8 +291,8 @@ class _Climb:
 
     def _solve(self, refinement: int, shift: float, boundary: Boundary) -> _Level:
         """The mode on one grid, checked, with its series and integrals."""
-        assert self.margins is not None  # settled by the first step
-        pencil = self._pencil(self.margins, refinement, boundary)
+        assert self.box is not None  # settled by the first step
+        pencil = self._pencil(self.box, refinement, boundary)
         mode, factorisation, others = recognise(pencil, shift, self.seed, refinement)
         mode = polish(pencil, factorisation, mode)
         allowed = pencil.residual_limit(mode.eigenvalue)
@@ -292,7 +306,7 @@ class _Climb:
         self.residual = max(self.residual, mode.residual)
         self.jet_residual = max(self.jet_residual, jet.residual)
         # the look of the mode here and now, for the next grid
-        self.seed = make_seed(pencil.operators, mode, self.k0, self.seed.boundary, refinement)
+        self.seed = self._seen(pencil, mode, refinement)
         integrals = mode_series(self.layout, pencil.operators, jet)
         return _Level(refinement, pencil.operators, jet, integrals)
 
@@ -341,6 +355,7 @@ class _Climb:
             raise NoGuidedMode(
                 f"the mode near index {n_eff:.6f} lies below the cut-off {self.cutoff:.6f}"
             )
+        self._check(values)
         seed = replace(self.seed, n_eff=n_eff)
         finest = self.levels[-1]
         step = self._wall_step()
@@ -359,15 +374,37 @@ class _Climb:
             self.omega, values, alternates, seed, (finest.operators, finest.jet), report
         )
 
+    def _check(self, values: dict[str, np.ndarray]) -> None:
+        """Refuse a ladder that changed modes on its way, or a box that is too small."""
+        squares = np.array([level.squared for level in self.levels])
+        steps = np.abs(np.diff(squares)) / squares[-1]
+        shares = [float(values[k][0]) for k in ("te_fraction", "core_power_fraction")]
+        if steps[-1] > max(steps[0], SMALL_STEP) or not all(-0.01 < s < 1.01 for s in shares):
+            indices = ", ".join(f"{np.sqrt(s) / self.k0:.5f}" for s in squares)
+            raise NotConverged(
+                f"the ladder of grids does not settle on one mode (indices {indices}); "
+                "move the wavelength or the width slightly"
+            )
+        n_eff = float(np.real(values["beta"][0])) / self.k0
+        for side in self.layout.open_sides() if self.own_box else ():
+            decays = decay_constant(self.omega, n_eff, self.backgrounds[side])
+            decays *= float(getattr(self.box, side))
+            if decays < LEAST_DECAYS and not self.layout.bend_radius_um:
+                raise TooCloseToCutoff(
+                    f"index {n_eff:.6f} is too close to cut-off: to the {side} the field would "
+                    f"need more than {WIDEST_BOX_UM:g} um to die away; widen or thicken the "
+                    "core, or use a shorter wavelength"
+                )
+
     def _report(self, truncation: float) -> SolveReport:
-        assert self.margins is not None
+        assert self.box is not None
         return SolveReport(
             ladder=tuple(level.refinement for level in self.levels),
             unknowns=sum(level.jet.right.shape[1] for level in self.levels),
             factorisations=self.factorisations,
             residual=self.residual,
             jet_residual=self.jet_residual,
-            margins=self.margins,
+            box=self.box,
             truncation=truncation,
             seconds=time.perf_counter() - self.started,
         )

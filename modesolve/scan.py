@@ -6,14 +6,12 @@ import re
 from collections.abc import Sequence
 from dataclasses import dataclass
 
-import numpy as np
-
 from materials.common import inputs
 from materials.common.constants import um_from_omega
 from materials.common.errors import NoGuidedMode, NotConverged, OutOfRange, UnknownName
 from modesolve.layout import Layout
 from modesolve.refine import LADDER, Resolved, refine
-from modesolve.seeds import cutoff_index, find_seeds, near_cutoff
+from modesolve.seeds import Seed, cutoff_index, find_seeds, near_cutoff, overlap
 
 __all__ = [
     "LABEL",
@@ -33,6 +31,9 @@ SHORTEST_UM, LONGEST_UM = 0.1, 100.0
 ORDER_SLACK = 0.02
 
 
+#: Two climbs with indices this near and fields this alike are one mode.
+SAME_INDEX, SAME_OVERLAP = 1e-6, 0.9
+
 #: Most modes searched or listed.
 MOST_MODES = 40
 
@@ -42,15 +43,15 @@ LABEL = re.compile(r"(TE|TM)(\d{1,2})")
 
 @dataclass(frozen=True, slots=True, eq=False)
 class ModeScan:
-    """Resolved modes of a layout in falling index, and why there are no more."""
+    """Resolved modes of a layout in falling index, and why there are no more.
+
+    ``labels`` count candidates that could not be resolved as well, so that one failure
+    does not rename the modes after it.
+    """
 
     modes: tuple[Resolved, ...]
+    labels: tuple[str, ...]
     notes: tuple[str, ...]
-
-    @property
-    def labels(self) -> list[str]:
-        """TE0, TM0, TE1 ... of the modes."""
-        return label_modes([float(r.values["te_fraction"][0]) for r in self.modes])
 
 
 def resolve_modes(
@@ -58,33 +59,66 @@ def resolve_modes(
 ) -> ModeScan:
     """The ``count`` highest guided modes of a layout.
 
-    Candidates of a coarse grid are climbed one by one; one that turns out not to be
-    guided is dropped with a note.
+    Candidates of a coarse grid are climbed one by one. One that turns out not to be
+    guided is dropped with a note, one that does not converge is left out with a note but
+    keeps its place in the numbering, and one that leads to a mode already found is dropped.
     """
     cutoff = cutoff_index(layout, omega)
-    seeds = find_seeds(layout, omega, count, cutoff)
     modes: list[Resolved] = []
+    failed: list[Seed] = []
     notes: list[str] = []
-    for seed in seeds:
+    for seed in find_seeds(layout, omega, count, cutoff):
         if len(modes) >= count and seed.n_eff < _last(modes, count) - ORDER_SLACK:
             break
         try:
-            modes.append(refine(layout, omega, seed, ladder))
+            found = refine(layout, omega, seed, ladder)
         except NoGuidedMode as exc:
             notes.append(str(exc))
         except NotConverged as exc:
-            if not near_cutoff(layout, omega, seed.n_eff, cutoff):
-                raise
-            notes.append(f"a candidate near index {seed.n_eff:.4f} is a mode of the box: {exc}")
-    modes.sort(key=lambda r: -float(np.real(r.values["beta"][0])))
-    if len(modes) < count:
+            if near_cutoff(layout, omega, seed.n_eff, cutoff):
+                notes.append(f"a candidate near index {seed.n_eff:.4f} did not hold up: {exc}")
+            else:
+                failed.append(seed)
+                notes.append(f"a mode near index {seed.n_eff:.4f} is left out: {exc}")
+        else:
+            if not any(_same(found, other) for other in modes):
+                modes.append(found)
+    return _labelled(modes, failed, notes, count, cutoff)
+
+
+def _labelled(
+    modes: list[Resolved], failed: list[Seed], notes: list[str], count: int, cutoff: float
+) -> ModeScan:
+    """Order, number and count what was found."""
+    entries: list[tuple[float, float, Resolved | None]] = [
+        (r.seed.n_eff, float(r.values["te_fraction"][0]), r) for r in modes
+    ]
+    entries += [(seed.n_eff, seed.te_fraction, None) for seed in failed]
+    entries.sort(key=lambda entry: -entry[0])
+    labels = label_modes([share for _, share, _ in entries])
+    kept = [
+        (resolved, label)
+        for (_, _, resolved), label in zip(entries, labels, strict=True)
+        if resolved is not None
+    ][:count]
+    if len(kept) < count:
         notes.insert(
             0,
-            f"{len(modes)} guided mode(s) where {count} were asked for: no other has an index "
-            f"above the cut-off {cutoff:.6f}",
+            f"{len(kept)} guided mode(s) where {count} were asked for: no other was found with "
+            f"an index above the cut-off {cutoff:.6f}",
         )
-        return ModeScan(tuple(modes), tuple(notes))
-    return ModeScan(tuple(modes[:count]), ())
+    elif not failed:
+        notes = []
+    return ModeScan(
+        tuple(resolved for resolved, _ in kept), tuple(label for _, label in kept), tuple(notes)
+    )
+
+
+def _same(a: Resolved, b: Resolved) -> bool:
+    """Whether two climbs ended at one mode."""
+    gap = abs(a.seed.n_eff - b.seed.n_eff)
+    alike = a.seed.boundary == b.seed.boundary and gap < SAME_INDEX
+    return alike and overlap(a.seed.fingerprint, b.seed.fingerprint) > SAME_OVERLAP
 
 
 def _last(modes: Sequence[Resolved], count: int) -> float:
@@ -151,7 +185,7 @@ def find_labelled(
     labels: list[str] = []
     while count <= MOST_MODES:
         scan = resolve_modes(layout, omega, count, ladder)
-        labels = scan.labels
+        labels = list(scan.labels)
         if label in labels:
             return scan.modes[labels.index(label)]
         if len(scan.modes) < count:

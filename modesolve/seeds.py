@@ -15,24 +15,25 @@ import numpy as np
 from materials.common.constants import C_UM_PER_PS
 from materials.common.errors import NotConverged, TooCloseToCutoff
 from modesolve.eigen import Factorisation, Pencil, RawMode, nearest_modes
-from modesolve.layout import Layout, decay_constant
-from modesolve.maps import Margins
+from modesolve.layout import Finer, Layout, decay_constant
+from modesolve.maps import Box
 from modesolve.operators import Boundary, Operators
 
 __all__ = [
     "Seed",
+    "box_for",
     "cutoff_index",
     "find_seeds",
     "make_seed",
-    "margins_for",
     "near_cutoff",
+    "overlap",
     "recognise",
     "side_backgrounds",
 ]
 
-#: Margins in decay lengths of the field, and the widest allowed, um.
+#: Box in decay lengths of the field, and the widest allowed, um.
 MARGIN_DECAYS = 11.0
-WIDEST_MARGIN_UM = 50.0
+WIDEST_BOX_UM = 50.0
 
 #: How the outer coordinates of a bend turn complex, by how faint the field is where it
 #: begins to travel away, exp(-tunnelled): share of the thickness that goes into the
@@ -58,13 +59,17 @@ LEAST_OVERLAP = 0.7
 #: Share of the index step below the cut-off, and above it, within which a coarse grid can
 #: not tell a guided mode from a mode of the numerical box. Below the cut-off a candidate
 #: must have a share of its field between the walls to be worth a ladder.
-COARSE_SLACK, NEAR_CUTOFF, LEAST_INNER_SHARE = 0.03, 0.08, 0.1
+COARSE_SLACK, NEAR_CUTOFF, LEAST_INNER_SHARE = 0.03, 0.08, 0.05
+
+#: Eigenpairs sought beyond those wanted: modes of the box come among them, and in a
+#: leaking bend many waves of the absorbing region.
+SPARE, SPARE_BENT = 3, 30
 
 #: Share of its field that a mode of a leaking bend must have between the walls.
 LEAST_BENT_SHARE = 0.3
 
-#: Grids of the slab problem beside a core; their Richardson value is good to about 1e-5.
-STACK_GRIDS = (4, 8)
+#: Grids of the slab problem beside a core; their Richardson value is good to some 1e-6.
+STACK_GRIDS = (6, 12)
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -77,15 +82,18 @@ class Seed:
         Estimate of the effective index.
     boundary : Boundary
         The parity it belongs to.
-    fingerprint : ndarray
+    fingerprint : ndarray, shape (2, blocks across, blocks up)
         Transverse field on the blocks of the unit grid, normalised.
     te_fraction : float
+    finer : pair of tuple of int
+        Factors for the cells of the inner segments that the mode needs.
     """
 
     n_eff: float
     boundary: Boundary
     fingerprint: np.ndarray
     te_fraction: float
+    finer: Finer = ((), ())
 
 
 def fingerprint(operators: Operators, right: np.ndarray, refinement: int) -> np.ndarray:
@@ -120,19 +128,46 @@ def _blocks(cells: int, refinement: int) -> np.ndarray:
     return np.arange(0, cells, refinement) if cells >= refinement else np.array([0])
 
 
+def _thinned(layout: Layout, omega: float, seed: Seed) -> Seed:
+    """The seed on no more blocks than the mode itself needs; the search may take more."""
+    needed = layout.finer(omega, seed.n_eff)
+    finer = tuple(
+        tuple(have if want > 1 else 1 for have, want in zip(*pair, strict=True))
+        for pair in zip(seed.finer, needed, strict=True)
+    )
+    look = seed.fingerprint
+    for axis, which, chosen in ((1, layout.across, finer[0]), (2, layout.up, finer[1])):
+        fine = which.segments(1.0, 1.0, 1, 0.0, seed.finer[axis - 1])
+        thin = which.segments(1.0, 1.0, 1, 0.0, chosen)
+        starts, first = [], 0
+        for a, b in zip(fine, thin, strict=True):
+            starts += list(range(first, first + a.cells, a.cells // b.cells))
+            first += a.cells
+        look = np.add.reduceat(look, starts, axis=axis)
+    look = look / np.linalg.norm(look)
+    return replace(seed, fingerprint=look, finer=(finer[0], finer[1]))
+
+
 def overlap(a: np.ndarray, b: np.ndarray) -> float:
-    """Overlap of two fingerprints, 0 to 1."""
+    """Overlap of two fingerprints, 0 to 1; 0 where their blocks differ."""
+    if a.shape != b.shape:
+        return 0.0
     return float(abs(np.vdot(a, b)))
 
 
 def make_seed(
-    operators: Operators, mode: RawMode, k0: float, boundary: Boundary, refinement: int
+    operators: Operators,
+    mode: RawMode,
+    k0: float,
+    boundary: Boundary,
+    refinement: int,
+    finer: Finer,
 ) -> Seed:
     """The seed of a mode on a grid of the given refinement."""
     look = fingerprint(operators, mode.right, refinement)
     share = float(np.sum(np.abs(look[0]) ** 2))
     n_eff = float(np.sqrt(max(np.real(mode.eigenvalue), 0.0)) / k0)
-    return Seed(n_eff, boundary, look, share)
+    return Seed(n_eff, boundary, look, share, finer)
 
 
 def recognise(
@@ -199,10 +234,8 @@ def near_cutoff(layout: Layout, omega: float, n_eff: float, cutoff: float) -> bo
     return n_eff < cutoff + NEAR_CUTOFF * (float(layout.indices(omega).max()) - cutoff)
 
 
-def margins_for(
-    layout: Layout, backgrounds: dict[str, float], omega: float, n_eff: float
-) -> Margins:
-    """Margins wide enough for the field of index ``n_eff`` to die away.
+def box_for(layout: Layout, backgrounds: dict[str, float], omega: float, n_eff: float) -> Box:
+    """Box wide enough for the field of index ``n_eff`` to die away.
 
     In a bend the field beyond x_c = R (n_eff/n - 1) travels away again: the outward margin
     then reaches past x_c and the outer coordinates turn complex, unless the field is so
@@ -211,28 +244,28 @@ def margins_for(
     Raises
     ------
     TooCloseToCutoff
-        When a margin would exceed ``WIDEST_MARGIN_UM``.
+        When a margin would exceed ``WIDEST_BOX_UM``.
     """
     out: dict[str, float] = {}
     for side, background in backgrounds.items():
         gamma = decay_constant(omega, n_eff, background)
-        if gamma * WIDEST_MARGIN_UM < MARGIN_DECAYS:
+        if gamma * WIDEST_BOX_UM < MARGIN_DECAYS:
             raise TooCloseToCutoff(
                 f"index {n_eff:.6f} is too close to cut-off: to the {side} the field decays "
                 f"towards index {background:.6f} over more than "
-                f"{WIDEST_MARGIN_UM / MARGIN_DECAYS:.1f} um; widen or thicken the core, "
+                f"{WIDEST_BOX_UM / MARGIN_DECAYS:.1f} um; widen or thicken the core, "
                 "or use a shorter wavelength"
             )
         out[side] = MARGIN_DECAYS / gamma
     if layout.bend_radius_um is not None:
-        return _bent_margins(layout, out, backgrounds[layout.outward], omega, n_eff)
-    return Margins(**out)
+        return _bent_box(layout, out, backgrounds[layout.outward], omega, n_eff)
+    return Box(**out)
 
 
-def _bent_margins(
+def _bent_box(
     layout: Layout, straight: dict[str, float], background: float, omega: float, n_eff: float
-) -> Margins:
-    """Margins of a bend from those of the straight guide."""
+) -> Box:
+    """Box of a bend from those of the straight guide."""
     radius = abs(layout.bend_radius_um or 0.0)
     half = layout.across.walls[-1]
     inward = "left" if layout.outward == "right" else "right"
@@ -247,8 +280,8 @@ def _bent_margins(
     for bound, turn, waves in ABSORBERS:
         if tunnelled < bound:
             out[layout.outward] = float(turning + waves * wavelength)
-            return Margins(**out, turn=turn)
-    return Margins(**out)
+            return Box(**out, turn=turn)
+    return Box(**out)
 
 
 def find_seeds(
@@ -256,7 +289,7 @@ def find_seeds(
     omega: float,
     count: int,
     cutoff: float,
-    refinement: int = 3,
+    refinement: int = 4,
 ) -> list[Seed]:
     """Candidates for guided modes on one coarse grid, highest index first.
 
@@ -268,33 +301,35 @@ def find_seeds(
     if top <= cutoff:
         return []
     k0 = omega / C_UM_PER_PS
+    finer = layout.finer(omega, cutoff)
     slack = COARSE_SLACK * (top - cutoff)
     reach = cutoff + max(slack, 2e-3)
     if layout.bend_radius_um is None:
-        margins = Margins(
+        box = Box(
             **{
-                side: min(MARGIN_DECAYS / decay_constant(omega, reach, cutoff), WIDEST_MARGIN_UM)
+                side: min(MARGIN_DECAYS / decay_constant(omega, reach, cutoff), WIDEST_BOX_UM)
                 for side in layout.open_sides()
             }
         )
     else:
         middle = 0.5 * (cutoff + top)
-        margins = margins_for(layout, side_backgrounds(layout, omega), omega, middle)
-    grid = layout.grid(margins, refinement)
+        box = box_for(layout, side_backgrounds(layout, omega), omega, middle)
+    grid = layout.grid(box, refinement, finer)
     permittivity = layout.permittivity(omega, 0)[:, 0]
     # in a bend a mode may hug the outer wall, with an index above the core's own
     crest = top * (1.0 + layout.across.walls[-1] / abs(layout.bend_radius_um or np.inf))
     shift = (k0 * crest) ** 2
     seeds = []
+    spare = SPARE_BENT if box.turn else SPARE
     for boundary in layout.parities():
         operators = layout.operators(grid, boundary)
         pencil = Pencil(operators, k0, permittivity)
         inner = layout.inner_cells(grid)
-        for mode in nearest_modes(pencil, pencil.factorise(shift), shift, count + 3):
-            seed = make_seed(operators, mode, k0, boundary, refinement)
+        for mode in nearest_modes(pencil, pencil.factorise(shift), shift, count + spare):
+            seed = make_seed(operators, mode, k0, boundary, refinement, finer)
             share = field_share(operators, mode.right, inner)
-            if margins.turn and share < LEAST_BENT_SHARE:
+            if box.turn and share < LEAST_BENT_SHARE:
                 continue  # a wave of the absorbing region
             if seed.n_eff > (cutoff - slack if share > LEAST_INNER_SHARE else cutoff):
-                seeds.append(seed)
+                seeds.append(_thinned(layout, omega, seed))
     return sorted(seeds, key=lambda s: -s.n_eff)

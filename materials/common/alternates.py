@@ -27,11 +27,15 @@ class Alternate(NamedTuple):
         Share of the change that goes into a bar.
     version : object
         The result under that change, of the same type.
+    random : bool
+        True for one of several independent standard deviations: those are added in
+        squares, all other changes straight.
     """
 
     name: str
     weight: float
     version: Any
+    random: bool = False
 
 
 def error_bar(functional: Callable[[Any], Any], best: Any, alternates: Iterable[Alternate]) -> Any:
@@ -48,8 +52,8 @@ def error_bar(functional: Callable[[Any], Any], best: Any, alternates: Iterable[
     Returns
     -------
     float or ndarray
-        sum over the alternates of weight |functional(version) - functional(best)|; NaN where
-        the number itself is not finite.
+        sum over the alternates of weight |functional(version) - functional(best)|, the
+        random ones among them added in squares; NaN where the number itself is not finite.
 
     Examples
     --------
@@ -57,9 +61,14 @@ def error_bar(functional: Callable[[Any], Any], best: Any, alternates: Iterable[
     0.305
     """
     value = np.asarray(functional(best), dtype=float)
-    bar = np.zeros(value.shape)
+    bar, variance = np.zeros(value.shape), np.zeros(value.shape)
     with np.errstate(invalid="ignore"):
-        for _, weight, version in alternates:
-            bar = bar + weight * np.abs(np.asarray(functional(version), dtype=float) - value)
+        for one in (Alternate(*entry) for entry in alternates):
+            change = one.weight * np.abs(np.asarray(functional(one.version), dtype=float) - value)
+            if one.random:
+                variance = variance + change**2
+            else:
+                bar = bar + change
+    bar = bar + np.sqrt(variance)
     out = np.where(np.isfinite(value), bar, np.nan)
     return float(out) if out.ndim == 0 else out

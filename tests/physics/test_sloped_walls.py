@@ -34,8 +34,8 @@ def test_order_and_ladder_at_each_angle(angle):
     fine = refine(layout, OMEGA, seed, ladder=(4, 5, 6, 8, 10), order=1)
     exact = fine.values["beta"][0]
     refinements = (3, 4, 6, 8)
-    margins = resolved.report.margins
-    betas = [solve_level(layout, OMEGA, seed, m, margins, 0).beta[0] for m in refinements]
+    box = resolved.report.box
+    betas = [solve_level(layout, OMEGA, seed, m, box, 0).beta[0] for m in refinements]
     orders = observed_orders(refinements, np.array(betas) - exact)
     assert np.all(np.abs(orders - 2.0) < 0.1)
     gap = C_UM_PER_PS * abs(resolved.values["beta"][0] - exact) / OMEGA

@@ -32,7 +32,6 @@ def made(**more):
         (dict(sidewall_deg=50.0), OutOfRange, "60 to 120"),
         (dict(width_um=0.3, sidewall_deg=70.0, width_at=0.0), OutOfRange, "narrow end"),
         (dict(width_at=1.5), OutOfRange, "width_at"),
-        (dict(bend_radius_um=50.0), InputError, "straight"),
         (dict(core="Si3N4-Luke2016"), UnknownName, "Si3N4-Luke2015"),
         (dict(core=3), InputError, "catalogue key"),
         (dict(layers_above=(SILICA, 0.2)), InputError, "pairs"),

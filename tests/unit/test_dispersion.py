@@ -51,7 +51,8 @@ def test_curve_agrees_with_direct_solves_within_the_bars(curve):
             if key == "beta4_ps4_per_km" or not np.isfinite(getattr(mode, key)):
                 continue
             gap = abs(found - getattr(mode, key))
-            assert gap < 2.0 * (bar + mode.error[key]), (key, wavelength)
+            # two solves, each with its own bar; 1.5 of them for the box they do not share
+            assert gap <= 1.5 * (bar + mode.error[key]), (key, wavelength)
         # measured: 6e-10 and 1.3e-3
         assert abs(curve.n_eff(wavelength) - mode.n_eff) < 5e-9
         assert abs(curve.beta2_ps2_per_km(wavelength) - mode.beta2_ps2_per_km) < 0.005

@@ -11,7 +11,7 @@ import materials
 from materials.common.constants import C_UM_PER_PS, omega_from_um
 from modesolve import CrossSection
 from modesolve.eigen import Pencil, dissection_order, nearest_modes, polish
-from modesolve.maps import Margins
+from modesolve.maps import Box
 from modesolve.operators import Boundary
 
 OMEGA = omega_from_um(1.55)
@@ -27,7 +27,7 @@ def pencil():
         height_um=0.6,
     )
     layout = section.layout()
-    grid = layout.grid(Margins(right=2.0, bottom=2.0, top=1.5), 4)
+    grid = layout.grid(Box(right=2.0, bottom=2.0, top=1.5), 4)
     operators = layout.operators(grid, layout.parities()[0])
     return Pencil(operators, OMEGA / C_UM_PER_PS, layout.permittivity(OMEGA, 0)[:, 0])
 

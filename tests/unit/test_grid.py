@@ -6,14 +6,14 @@ import numpy as np
 import pytest
 
 from modesolve.grid import Grid
-from modesolve.maps import EVEN, Axis, Margins
+from modesolve.maps import EVEN, Axis, Box
 
 
-def grid(refinement=3, **margins):
+def grid(refinement=3, **box):
     across = Axis((0.0, 0.8), low="mirror", high="open")
     up = Axis((0.0, 0.3, 0.8))
     return Grid.build(
-        across, up, Margins(**{"right": 2.0, "bottom": 1.5, "top": 2.5, **margins}), refinement
+        across, up, Box(**{"right": 2.0, "bottom": 1.5, "top": 2.5, **box}), refinement
     )
 
 
@@ -48,7 +48,7 @@ def test_even_grading_has_equal_steps_and_uniform_axes_one_cell():
     g = Grid.build(
         Axis((0.0, 0.01), "wall", "wall", uniform=True, grading=EVEN),
         Axis((0.0, 1.0), "wall", "wall", grading=EVEN),
-        Margins(),
+        Box(),
         2,
     )
     assert g.shape == (1, 16)

@@ -11,7 +11,7 @@ from modesolve import CrossSection
 from modesolve.eigen import Pencil, nearest_modes, polish
 from modesolve.integrals import mode_series
 from modesolve.jets import mode_jet
-from modesolve.maps import Margins
+from modesolve.maps import Box
 
 #: Central-difference weights of the 9-point stencil (Fornberg, Math. Comp. 51, 699 (1988)).
 FIRST = np.array([1 / 280, -4 / 105, 1 / 5, -4 / 5, 0, 4 / 5, -1 / 5, 4 / 105, -1 / 280])
@@ -43,7 +43,7 @@ def guide():
         height_um=0.8,
     )
     layout = section.layout()
-    grid = layout.grid(Margins(right=2.4, bottom=2.4, top=2.4), 3)
+    grid = layout.grid(Box(right=2.4, bottom=2.4, top=2.4), 3)
     return layout, layout.operators(grid, layout.parities()[0])
 
 

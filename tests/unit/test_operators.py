@@ -10,7 +10,7 @@ import materials
 from materials.common.constants import C_UM_PER_PS, omega_from_um
 from modesolve.eigen import Pencil, nearest_modes
 from modesolve.grid import Grid
-from modesolve.maps import EVEN, Grading, Margins
+from modesolve.maps import EVEN, Box, Grading
 from modesolve.operators import Boundary, Operators, Topology
 
 
@@ -34,7 +34,7 @@ class Wavy:
 
 
 def wavy_operators(layout, refinement, strength):
-    plain = layout.grid(Margins(), refinement)
+    plain = layout.grid(Box(), refinement)
     chart = Wavy(plain.map, 0.6, 0.5, 0.2, strength)
     grid = Grid.on(chart, plain.segment_u, plain.segment_v)
     return layout.operators(grid, layout.boundary)
@@ -60,7 +60,7 @@ def test_masses_are_symmetric_and_positive(strength):
 def test_media_share_the_vacuum_mass():
     """In a straight guide the media's unit masses add up to the inverse-mu mass."""
     layout = box(materials.constant(2.0), materials.constant(1.0), 0.6, 0.5, 0.2, Grading())
-    operators = layout.operators(layout.grid(Margins(), 2), layout.boundary)
+    operators = layout.operators(layout.grid(Box(), 2), layout.boundary)
     total = sum(m.across for m in operators.media)
     assert abs(total - operators.inverse_mu).max() < 1e-12 * abs(operators.inverse_mu).max()
 
@@ -87,7 +87,7 @@ def test_a_curved_grid_gives_the_same_modes_to_second_order():
 
 def test_operators_are_free_of_frequency_and_linear_in_permittivity():
     layout = box(materials.constant(2.0), materials.constant(1.0), 0.6, 0.5, 0.2, EVEN)
-    operators: Operators = layout.operators(layout.grid(Margins(), 1), layout.boundary)
+    operators: Operators = layout.operators(layout.grid(Box(), 1), layout.boundary)
     across, along = operators.masses(np.array([4.0, 1.0]))
     one, two = (operators.pencil(k0, across, along) for k0 in (0.0, 3.0))
     assert abs(across - 4.0 * operators.media[0].across - operators.media[1].across).max() < 1e-12
