@@ -133,13 +133,14 @@ def _load(key: str) -> Medium:
     table = _read(stem)
     entry = _entry(key, stem, fraction)
     caveats = [*entry.caveats, *_memory_caveats(entry)]
-    formula, coefficients, fit = _law(table, fraction)
+    formula, coefficients, fit, of_fit = _law(table, fraction)
     if fit is not None:
         low, high = fit.window_um
         caveats.append(
             f"index fitted to {fit.points} points over {low:g}-{high:g} um "
             f"(residual {fit.residual_rms:.1e} rms)"
         )
+        caveats += of_fit
     return Medium(
         key=key,
         name=entry.name,
@@ -270,8 +271,8 @@ def _record(fields: Mapping[str, Any]) -> Record:
 
 def _law(
     table: Mapping[str, Any], fraction: float | None
-) -> tuple[str, tuple[float, ...], Fit | None]:
-    """Formula, coefficients and fit of a table."""
+) -> tuple[str, tuple[float, ...], Fit | None, tuple[str, ...]]:
+    """Formula, coefficients and fit of a table, and what to say of the fit."""
     if "points" in table:
         from materials import measured  # lazily: fits need scipy.optimize
 
@@ -281,11 +282,11 @@ def _law(
         )
     if fraction is not None:
         formula, coefficients = mixtures.law(table["mixture"], fraction)
-        return formula, coefficients, None
+        return formula, coefficients, None, ()
     formula = table["formula"]
     if formula not in formulas.FORMULAS:
         raise UnknownName(f"table of {table['key']}: no formula {formula!r}")
-    return formula, tuple(float(c) for c in table["coefficients"]), None
+    return formula, tuple(float(c) for c in table["coefficients"]), None, ()
 
 
 def _memory_caveats(entry: Entry) -> list[str]:

@@ -1,6 +1,10 @@
 """A medium from measured points: a user's own n(lambda), or a table of the catalogue.
 
-The fit itself is in :mod:`materials.resonance_fit`, imported only when it is needed.
+The fit itself is in :mod:`materials.resonance_fit`, imported only when it is needed. Its
+error has two parts: the covariance of the constants, which takes the number of
+resonances for granted, and the model error of :mod:`materials.model_error`, which says
+by how much that form itself departs from the points. A table of the catalogue counts as
+a printed curve there, points of a user as measurements with noise.
 """
 
 from __future__ import annotations
@@ -12,6 +16,7 @@ from numpy.typing import ArrayLike
 
 from materials.common.errors import InputError, OutOfRange
 from materials.medium import Fit, Medium
+from materials.model_error import Misfit, misfit
 from materials.nondispersive import stated_values
 
 if TYPE_CHECKING:
@@ -67,7 +72,9 @@ def from_table(
     Least squares in n of n^2 = 1 + sum A_i l^2/(l^2 - B_i^2) with A_i >= 0 and no
     resonance inside the window; a resonance may sit at zero or at infinite wavelength
     (a constant, or -C l^2). The covariance is scaled up where the scatter exceeds
-    ``sigma`` significantly, and where neighbouring residuals are correlated.
+    ``sigma`` significantly, and where neighbouring residuals are correlated. A smooth
+    misfit beyond the noise, as too few resonances leave, is a caveat and enters the
+    variations in full.
 
     Examples
     --------
@@ -101,22 +108,27 @@ def from_table(
 
 def fit_window(
     wavelength_um: ArrayLike, index: ArrayLike, window_um: tuple[float, float], terms: int
-) -> tuple[str, tuple[float, ...], Fit]:
-    """Formula, coefficients and :class:`Fit` of the points inside a window (for tables)."""
+) -> tuple[str, tuple[float, ...], Fit, tuple[str, ...]]:
+    """Formula, coefficients, :class:`Fit` and caveats of a table's points inside a window."""
     w, n = np.asarray(wavelength_um, dtype=float), np.asarray(index, dtype=float)
     inside = (w >= window_um[0]) & (w <= window_um[1])
-    formula, coefficients, fit, _ = _fit(w[inside], n[inside], None, terms)
-    return formula, coefficients, fit
+    return _fit(w[inside], n[inside], None, terms, printed_curve=True)
 
 
 def _fit(
-    w: np.ndarray, n: np.ndarray, sigma: np.ndarray | None, terms: int | None
+    w: np.ndarray,
+    n: np.ndarray,
+    sigma: np.ndarray | None,
+    terms: int | None,
+    printed_curve: bool = False,
 ) -> tuple[str, tuple[float, ...], Fit, tuple[str, ...]]:
     """Formula, coefficients, Fit and caveats of points in rising order."""
     from materials import resonance_fit  # lazily: scipy.optimize is slow to import
 
     best = resonance_fit.fit(w, n, sigma, terms)
     scale, caveats = _error_scale(best, sigma is not None)
+    smooth = misfit(w, best.residual, best.structure.parameters, sigma, printed_curve)
+    caveats = (*caveats, *_misfit_caveats(smooth, best.structure.terms))
     root = best.root * scale
     free = best.structure.free()
     covariance = root[free] @ root[free].T
@@ -130,8 +142,19 @@ def _fit(
         covariance=covariance,
         covariance_root=root,
         alternatives=tuple((w, tuple(float(c) for c in k)) for w, k in best.alternatives),
+        misfit_variations=smooth.variations,
     )
     return "fitted_resonances", tuple(float(c) for c in best.coefficients), fit, caveats
+
+
+def _misfit_caveats(smooth: Misfit, terms: int) -> list[str]:
+    if smooth.smooth_rms == 0.0:
+        return []
+    form = "1 resonance leaves" if terms == 1 else f"{terms} resonances leave"
+    return [
+        f"{form} a smooth misfit of {smooth.smooth_rms:.1e} rms beside {smooth.noise_rms:.1e} "
+        "of scatter: the error bars hold it"
+    ]
 
 
 def _error_scale(best: ResonanceFit, sigma_given: bool) -> tuple[float, tuple[str, ...]]:

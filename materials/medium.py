@@ -15,7 +15,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import ArrayLike
 
-from materials import formulas
+from materials import formulas, model_error
 from materials.common import series
 from materials.common.constants import (
     C_UM_PER_PS,
@@ -58,6 +58,9 @@ class Fit:
     alternatives : tuple of (float, tuple of float)
         Coefficients of other arrangements of resonances that the points do not rule out,
         each with its posterior weight.
+    misfit_variations : ndarray, shape (rows, degree + 1)
+        One-sigma variations of the index for the error of the form itself, as in
+        :class:`materials.model_error.Misfit`.
     """
 
     window_um: tuple[float, float]
@@ -68,6 +71,7 @@ class Fit:
     covariance: np.ndarray
     covariance_root: np.ndarray
     alternatives: tuple[tuple[float, tuple[float, ...]], ...] = ()
+    misfit_variations: np.ndarray = field(default_factory=lambda: np.zeros((0, 1)))
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -245,10 +249,12 @@ class Medium:
         -------
         ndarray of float, shape (n_params, order + 1, *omega.shape)
             First-order changes of :meth:`permittivity_series`, independent of each
-            other: the variance of any linear result is the sum of their squares. The
-            last ones stand for other arrangements of resonances that fit about as well
-            (their difference times the root of their weight). ``n_params`` is 0 for a
-            medium that was not fitted here.
+            other: the variance of any linear result is the sum of their squares. First
+            the constants; then other arrangements of resonances that fit about as well
+            (their difference times the root of their weight); then the model error, by
+            which a sum of resonances as such departs from the points
+            (:mod:`materials.model_error`). ``n_params`` is 0 for a medium that was not
+            fitted here.
         """
         omega = self._checked_omega(omega_rad_per_ps)
         q = formulas.inverse_wavelength(omega, order)
@@ -260,6 +266,9 @@ class Medium:
         for weight, coefficients in self.fit.alternatives:
             other = formulas.permittivity(self.formula, q, coefficients)
             out = np.concatenate([out, math.sqrt(weight) * (other - e)[None]])
+        smooth = model_error.index_variations(q, self.fit.window_um, self.fit.misfit_variations)
+        twice_n = 2.0 * series.sqrt(e)
+        out = np.array([*out, *(series.multiply(twice_n, row) for row in smooth)])
         if self.index_shift != 0.0:
             # eps = (sqrt(e) + shift)^2, hence d eps = (1 + shift/sqrt(e)) de
             factor = self.index_shift * series.power(e, -0.5)
