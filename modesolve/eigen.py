@@ -21,7 +21,7 @@ import scipy.sparse as sp
 from scipy.sparse.linalg import ArpackError, ArpackNoConvergence, LinearOperator, eigs, splu
 
 from materials.common.errors import NotConverged, SolverError
-from modesolve.operators import Boundary, Operators, Topology
+from modesolve.operators import Boundary, Operators, topology_of
 
 __all__ = ["Factorisation", "Pencil", "RawMode", "dissection_order", "nearest_modes", "polish"]
 
@@ -49,7 +49,7 @@ def dissection_order(shape: tuple[int, int], boundary: Boundary, reach: float = 
     -------
     ndarray of int, shape (edges,)
     """
-    positions = Topology(shape, boundary).edge_positions()
+    positions = topology_of(shape, boundary).edge_positions()
     out: list[np.ndarray] = []
     _dissect(positions, np.arange(len(positions)), reach, out)
     order = np.concatenate(out)

@@ -35,7 +35,8 @@ class FieldMap(Result):
 def field_map(layout: Layout, operators: Operators, jet: Jet, boundary: Boundary) -> FieldMap:
     """Field of a mode on its finest grid, unfolded at the mirror plane."""
     f = quarter_fields(operators, jet)
-    components = [np.mean(part[0], axis=(-2, -1)) for part in (f.e_x, f.e_y, f.e_z)]
+    parts = (f.e_x[0], f.e_y[0], -1j * f.e_along[0])
+    components = [np.mean(part, axis=(-2, -1)) for part in parts]
     x, y = (np.real(part) for part in operators.grid.centres())
     if layout.etched_wall is not None:
         components, x = _on_columns(components, x)

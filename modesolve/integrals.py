@@ -39,14 +39,15 @@ PER_UM_TO_PER_M = 1e6
 class QuarterFields:
     """Physical field series in the quarter cells, shape (order + 1, n_u, n_v, 2, 2).
 
-    ``y_x``, ``y_y``: the left vector's components; transverse h' is n_eff z x y / arc.
+    ``e_along`` is i E_z, real in a lossless guide: E_z = -i e_along. ``y_x``, ``y_y``: the
+    left vector's components; transverse h' is n_eff z x y / arc.
     ``area``: physical area of each quarter cell, um^2, and ``arc`` its arc-length factor
     (no order axis).
     """
 
     e_x: np.ndarray
     e_y: np.ndarray
-    e_z: np.ndarray
+    e_along: np.ndarray
     y_x: np.ndarray
     y_y: np.ndarray
     area: np.ndarray
@@ -57,19 +58,14 @@ def quarter_fields(operators: Operators, jet: Jet) -> QuarterFields:
     """Physical components of the field of a jet."""
     metric = operators.grid.metric
     g = operators.topology.nodes_to_quarters(jet.longitudinal)
-    e_z = series.multiply(-1j * series.reciprocal(jet.beta), g) / metric.arc
+    e_along = series.multiply(series.reciprocal(jet.beta), g) / metric.arc
     return QuarterFields(
         *operators.transverse(jet.right),
-        e_z,
+        e_along,
         *operators.transverse(jet.left),
         QUARTER * metric.det,
         metric.arc,
     )
-
-
-def _square(a: np.ndarray) -> np.ndarray:
-    """Series of a^2, no conjugate."""
-    return series.multiply(a, a)
 
 
 def _over_cells(density: np.ndarray) -> np.ndarray:
@@ -100,16 +96,16 @@ def mode_series(layout: Layout, operators: Operators, jet: Jet) -> dict[str, np.
     halves = 2.0 if layout.mirror else 1.0
     k0 = series.variable(jet.omega, order) / C_UM_PER_PS
     n_eff = series.divide(jet.beta, k0)
-    size_x, size_y, along = _square(f.e_x), _square(f.e_y), _square(f.e_z)
-    intensity = size_x + size_y - along
+    size_x, size_y, along = (series.square(part) for part in (f.e_x, f.e_y, f.e_along))
+    across = size_x + size_y
+    intensity = across + along
     power_density = series.multiply(f.e_x, f.y_x) + series.multiply(f.e_y, f.y_y)
     power_density = series.multiply(n_eff, power_density) / f.arc  # h' is n_eff z x y / h
     power = _total(power_density * f.area)
     weighted = intensity * f.area * f.arc
-    fourth = _square(intensity)
+    fourth = series.square(intensity)
     out = {"attenuation_per_um": 2.0 * np.imag(jet.beta)}
-    transverse = _total((size_x + size_y) * f.area)
-    out["te_fraction"] = series.divide(_total(size_x * f.area), transverse)
+    out["te_fraction"] = series.divide(_total(size_x * f.area), _total(across * f.area))
     cells = _over_cells(power_density * f.area)
     core = operators.medium_of_cell == layout.core
     out["core_power_fraction"] = series.divide(cells[:, core].sum(axis=-1), power)
@@ -117,19 +113,19 @@ def mode_series(layout: Layout, operators: Operators, jet: Jet) -> dict[str, np.
         _total(intensity * f.area), _total(fourth * f.area)
     )
     out["power_area_um2"] = halves * _squared_over(
-        power, _total(series.multiply(power_density, power_density) * f.area)
+        power, _total(series.square(power_density) * f.area)
     )
     own = _over_cells(weighted)
     for i, inside in enumerate(operators.media):
         weight = series.divide(own[:, inside.inside].sum(axis=-1), power)
         out[f"weight_{i}"] = series.multiply(series.sqrt(jet.permittivity[i]), weight)
-    dot_squared = _square(size_x + size_y + along)
+    dot_squared = series.square(across - along)
     out.update(_nonlinear(layout, operators, jet, fourth, dot_squared, power, k0, halves))
     return {"beta": jet.beta, **{key: np.real(value) for key, value in out.items()}}
 
 
 def _squared_over(a: np.ndarray, b: np.ndarray) -> np.ndarray:
-    return series.divide(series.multiply(a, a), b)
+    return series.divide(series.square(a), b)
 
 
 def _nonlinear(
@@ -156,7 +152,7 @@ def _nonlinear(
     for share, eps, medium in zip(relative, jet.permittivity, operators.media, strict=True):
         if share:
             total = total + share * series.multiply(eps, cells[:, medium.inside].sum(axis=-1))
-    inverse_area = series.divide(total, series.multiply(power, power)) / halves
+    inverse_area = series.divide(total, series.square(power)) / halves
     gamma = np.full(k0.shape, np.nan)
     if core_n2:
         scale = core_n2 * UM2_PER_M2 * PER_UM_TO_PER_M

@@ -9,6 +9,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass, field, replace
 from enum import IntEnum
+from functools import lru_cache
 
 import numpy as np
 
@@ -27,7 +28,7 @@ from modesolve.maps import (
 )
 from modesolve.operators import Boundary, Operators
 
-__all__ = ["SLAB_WIDTH_UM", "Corners", "Layout", "decay_constant"]
+__all__ = ["SLAB_WIDTH_UM", "Corners", "Layout", "decay_constant", "operators_on"]
 
 #: Width of the single cell that stands for an infinitely wide slab, um. It is narrow, so
 #: that what varies across it lies far below every cut-off.
@@ -110,7 +111,7 @@ class Layout:
         return "left" if (self.bend_radius_um or 0.0) < 0.0 else "right"
 
     def operators(self, grid: Grid, boundary: Boundary) -> Operators:
-        """Matrices on a grid of this layout."""
+        """Matrices on a grid of this layout; `operators_on` keeps them."""
         filled = np.array(self.fill)[grid.segment_u[:, None], grid.segment_v[None, :]]
         return Operators(grid, boundary, filled, len(self.media))
 
@@ -187,6 +188,14 @@ class Layout:
             return max(n[column[-1]] for column in self.fill)
         stack = self.fill[0 if side == "left" else -1]
         return max(n[stack[0]], n[stack[-1]])
+
+
+@lru_cache(maxsize=8)
+def operators_on(
+    layout: Layout, box: Box, refinement: int, finer: Finer, boundary: Boundary
+) -> Operators:
+    """Matrices of one grid, kept: the nodes of a curve share them, only permittivity moves."""
+    return layout.operators(layout.grid(box, refinement, finer), boundary)
 
 
 def decay_constant(omega: float, n_eff: float, background: float) -> float:

@@ -21,13 +21,14 @@ coordinates. K. S. Yee, IEEE Trans. Antennas Propag. 14, 302 (1966): the stagger
 from __future__ import annotations
 
 from dataclasses import dataclass
+from functools import lru_cache
 
 import numpy as np
 import scipy.sparse as sp
 
 from modesolve.grid import Grid, Metric
 
-__all__ = ["Boundary", "MediumMass", "Operators", "Topology"]
+__all__ = ["Boundary", "MediumMass", "Operators", "Topology", "topology_of"]
 
 #: A quarter cell's share of the logical unit cell.
 QUARTER = 0.25
@@ -133,6 +134,12 @@ class Topology:
         low = np.stack([full[..., :-1, :-1], full[..., :-1, 1:]], axis=-1)
         high = np.stack([full[..., 1:, :-1], full[..., 1:, 1:]], axis=-1)
         return np.stack([low, high], axis=-2)
+
+
+@lru_cache(maxsize=32)
+def topology_of(shape: tuple[int, int], boundary: Boundary) -> Topology:
+    """The topology of a grid; the same for every geometry and frequency, so made once."""
+    return Topology(shape, boundary)
 
 
 def _number(keep: np.ndarray, first: int) -> np.ndarray:
@@ -254,7 +261,7 @@ class Operators:
         self, grid: Grid, boundary: Boundary, medium_of_cell: np.ndarray, media: int
     ) -> None:
         self.grid = grid
-        self.topology = Topology(grid.shape, boundary)
+        self.topology = topology_of(grid.shape, boundary)
         metric = grid.metric
         self.medium_of_cell = medium_of_cell
         uu, vv, uv = _isotropic_across(metric)

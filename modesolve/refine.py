@@ -31,7 +31,7 @@ from materials.common.errors import InputError, NoGuidedMode, NotConverged, TooC
 from modesolve.eigen import Factorisation, Pencil, RawMode, polish
 from modesolve.integrals import mode_series
 from modesolve.jets import Jet, mode_jet
-from modesolve.layout import Corners, Layout, decay_constant
+from modesolve.layout import Corners, Layout, decay_constant, operators_on
 from modesolve.maps import Box
 from modesolve.operators import Boundary, Operators
 from modesolve.seeds import (
@@ -272,8 +272,7 @@ class _Climb:
         return make_seed(pencil.operators, mode, self.k0, seed.boundary, refinement, seed.finer)
 
     def _pencil(self, box: Box, refinement: int, boundary: Boundary) -> Pencil:
-        grid = self.layout.grid(box, refinement, self.seed.finer)
-        operators = self.layout.operators(grid, boundary)
+        operators = operators_on(self.layout, box, refinement, self.seed.finer, boundary)
         return Pencil(operators, self.k0, self.permittivity[:, 0])
 
     def _predicted(self, refinement: int) -> float:

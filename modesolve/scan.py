@@ -55,9 +55,15 @@ class ModeScan:
 
 
 def resolve_modes(
-    layout: Layout, omega: float, count: int, ladder: tuple[int, ...] = LADDER
+    layout: Layout,
+    omega: float,
+    count: int,
+    ladder: tuple[int, ...] = LADDER,
+    seeds: list[Seed] | None = None,
 ) -> ModeScan:
     """The ``count`` highest guided modes of a layout.
+
+    ``seeds`` are the candidates where they are known already.
 
     Candidates of a coarse grid are climbed one by one. One that turns out not to be
     guided is dropped with a note, one that does not converge is left out with a note but
@@ -67,7 +73,7 @@ def resolve_modes(
     modes: list[Resolved] = []
     failed: list[Seed] = []
     notes: list[str] = []
-    for seed in find_seeds(layout, omega, count, cutoff):
+    for seed in find_seeds(layout, omega, count, cutoff) if seeds is None else seeds:
         if len(modes) >= count and seed.n_eff < _last(modes, count) - ORDER_SLACK:
             break
         try:
@@ -179,18 +185,19 @@ def find_labelled(
     """
     if not isinstance(label, str) or LABEL.fullmatch(label) is None:
         raise UnknownName(f"mode = {label!r}: give a label such as TE0, TM0 or TE1")
-    seeds = find_seeds(layout, omega, MOST_MODES // 4, cutoff_index(layout, omega))
-    coarse = label_modes([s.te_fraction for s in seeds])
-    count = coarse.index(label) + 1 if label in coarse else len(seeds) + 1
+    wanted = 2 * int(label[2:]) + 2  # TE and TM take turns, more or less
     labels: list[str] = []
-    while count <= MOST_MODES:
-        scan = resolve_modes(layout, omega, count, ladder)
+    while wanted <= 2 * MOST_MODES:
+        seeds = find_seeds(layout, omega, wanted, cutoff_index(layout, omega))
+        coarse = label_modes([seed.te_fraction for seed in seeds])
+        count = coarse.index(label) + 1 if label in coarse else len(seeds) + 1
+        scan = resolve_modes(layout, omega, count, ladder, seeds)
         labels = list(scan.labels)
         if label in labels:
             return scan.modes[labels.index(label)]
-        if len(scan.modes) < count:
+        if len(seeds) < wanted:
             break
-        count += 2
+        wanted += 4
     raise NoGuidedMode(
         f"no guided mode {label} at {um_from_omega(omega):g} um: guided there "
         f"{'are ' + ', '.join(labels) if labels else 'is none'}; "

@@ -68,6 +68,19 @@ def multiply(a: np.ndarray, b: np.ndarray) -> np.ndarray:
     return out
 
 
+def square(a: np.ndarray) -> np.ndarray:
+    """Square of a series, no conjugate; half the work of a product."""
+    a = np.asarray(a)
+    out = np.zeros(a.shape, dtype=np.result_type(a, float))
+    for k in range(a.shape[0]):
+        for j in range((k + 1) // 2):
+            out[k] += a[j] * a[k - j]
+        out[k] *= 2.0
+        if k % 2 == 0:
+            out[k] += a[k // 2] * a[k // 2]
+    return out
+
+
 def reciprocal(a: np.ndarray) -> np.ndarray:
     """Series of 1/a; a[0] must not vanish."""
     a = np.asarray(a)
