@@ -161,7 +161,7 @@ def ring(design: str, changes: tuple[str, ...], output: str | None, replace: boo
     if table is None:
         raise study.missing_table(checked, "ring")
     with working() as tell:
-        results = study.solve_ring(checked, study.solve_curve(checked, tell))
+        results = study.solve_ring(checked, study.solve_ring_curve(checked, tell))
     show(out(), *ring_report(table, results))
     notes(results.notes)
     save(results.pairs, output)

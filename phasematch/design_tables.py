@@ -12,7 +12,7 @@ from typing import Annotated, Any, Literal
 from pydantic import BaseModel, ConfigDict, Field, Strict
 from pydantic.fields import FieldInfo
 
-from modesolve.cross_section import FLATTEST_DEG, LARGEST_UM, SMALLEST_UM
+from modesolve.cross_section import FLATTEST_DEG, LARGEST_UM, SMALLEST_UM, STRAIGHTEST_UM
 from modesolve.scan import LABEL, LONGEST_UM, MOST_MODES, SHORTEST_UM
 
 Number = Annotated[float, Strict()]
@@ -97,7 +97,12 @@ class CrossSectionKeys(Table):
     layers_below: tuple[Layer, ...] = key("flat films below the core", _LAYERS, ())
     layers_above: tuple[Layer, ...] = key("flat films above the core", _LAYERS, ())
     bend_radius_um: Number | None = number(
-        "bend radius at the core's centre; leave out for straight", "um", 0.0, 1e7, None, above=True
+        "bend radius at the core's centre, negative to bend the other way; leave out for a "
+        "straight guide (a [ring] is solved at its own radius)",
+        "um",
+        -STRAIGHTEST_UM,
+        STRAIGHTEST_UM,
+        None,
     )
     temperature_degc: Number | None = number(
         "temperature; leave out for each table's own", "degC", -273.15, 1000.0, None, above=True

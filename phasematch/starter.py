@@ -28,9 +28,6 @@ _EXAMPLE = {
     ("ring", "pump_um"): 1.55,
 }
 
-#: Keys that this version always refuses.
-_NOT_SOLVED = {("cross_section", "bend_radius_um")}
-
 
 def starter_text() -> str:
     """A design file that runs as it is, with a comment on every key."""
@@ -43,8 +40,7 @@ def starter_text() -> str:
     for name, table in TABLES.items():
         lines += ["", f"# {(table.__doc__ or '').strip()}", f"[{name}]"]
         for key, field in table.model_fields.items():
-            if (name, key) not in _NOT_SOLVED:
-                lines += _key_lines(name, key, field)
+            lines += _key_lines(name, key, field)
     return "\n".join(lines) + "\n"
 
 

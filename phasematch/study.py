@@ -127,10 +127,27 @@ def section_of(design: Design) -> CrossSection:
 
 def solve_curve(design: Design, progress: Progress) -> DispersionCurve:
     """The dispersion curve of the design's mode over its band."""
+    return _solve_curve(design, section_of(design), progress)
+
+
+def solve_ring_curve(design: Design, progress: Progress) -> DispersionCurve:
+    """The same for the guide bent at the ring's radius.
+
+    A bend radius stated for the cross-section itself stands.
+    """
+    section = section_of(design)
+    if design.tables.ring is not None and section.bend_radius_um is None:
+        section = replace(section, bend_radius_um=design.tables.ring.radius_um)
+    return _solve_curve(design, section, progress)
+
+
+def _solve_curve(design: Design, section: CrossSection, progress: Progress) -> DispersionCurve:
     band, mode = design.tables.band, design.tables.mode
-    progress(f"dispersion of {mode.label} from {band.from_um:g} to {band.to_um:g} um")
+    radius = section.bend_radius_um
+    bent = "" if radius is None else f", bent at {radius:g} um"
+    progress(f"dispersion of {mode.label} from {band.from_um:g} to {band.to_um:g} um{bent}")
     return dispersion(
-        section_of(design),
+        section,
         band.from_um,
         band.to_um,
         mode=mode.label,
@@ -223,8 +240,9 @@ def solve_design(design: Design, progress: Progress = lambda message: None) -> O
         progress("channel: pump x signal map, conversion band, pair flux")
         channel = solve_channel(design, curve)
     if tables.ring is not None:
+        bent = solve_ring_curve(design, progress)
         progress("ring: resonance pairs and detuning map")
-        ring = solve_ring(design, curve)
+        ring = solve_ring(design, bent)
     keys = [m.key for m in section.media]
     return Outcome(
         design=design,

@@ -80,8 +80,8 @@ def problems(raw):
         ),
         ({"cross_section__sidewall_deg": 45}, ["= 45: must be a number from 60 to 120 degrees"]),
         (
-            {"cross_section__bend_radius_um": 50.0},
-            ["my.toml: cross_section.bend_radius_um = 50.0: this version solves straight guides"],
+            {"cross_section__bend_radius_um": 0.5},
+            ["my.toml: cross_section.bend_radius_um = 0.5 um: allowed", "clear the bend's axis"],
         ),
         (
             {"cross_section__temperature_degc": 30.0, "cross_section__core": "As2S3-Rodney1958"},
@@ -97,8 +97,8 @@ def problems(raw):
         ),
         ({"cross_section__sidewall_deg": 45}, ["= 45: must be a number from 60 to 120 degrees"]),
         (
-            {"cross_section__bend_radius_um": 50.0},
-            ["my.toml: cross_section.bend_radius_um = 50.0: this version solves straight guides"],
+            {"cross_section__bend_radius_um": 0.5},
+            ["my.toml: cross_section.bend_radius_um = 0.5 um: allowed", "clear the bend's axis"],
         ),
         (
             {"cross_section__temperature_degc": 30.0, "cross_section__core": "As2S3-Rodney1958"},
@@ -163,7 +163,7 @@ def test_problems_of_one_cross_section_do_not_hide_each_other():
             cross_section__slab_um=0.9,
             cross_section__sidewall_deg=119.0,
             cross_section__width_um=0.5,
-            cross_section__bend_radius_um=50.0,
+            cross_section__bend_radius_um=0.1,
         )
     )
     keys = ("core", "slab_um", "sidewall_deg", "bend_radius_um")
@@ -174,7 +174,7 @@ def test_limits_are_those_of_the_solver():
     for angle in (60.0, 120.0):
         section = check_design(changed(cross_section__sidewall_deg=angle)).tables.cross_section
         assert CrossSection(**section.model_dump()).sidewall_deg == angle
-    assert "bend_radius_um" not in starter_text()
+    assert "# bend_radius_um =" in starter_text()
 
 
 def test_extrapolation_must_be_asked_for():
