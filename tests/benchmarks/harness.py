@@ -11,6 +11,7 @@ import csv
 import gc
 import os
 import platform
+import textwrap
 import time
 from collections import Counter
 from collections.abc import Callable, Iterator
@@ -21,6 +22,7 @@ from typing import Any
 from unittest.mock import patch
 
 OUTPUT = Path(__file__).with_name("output")
+WIDTH = 96
 
 
 class Stages:
@@ -100,7 +102,11 @@ class Report:
         self.say(facts())
 
     def say(self, line: str = "") -> None:
-        """Print one line."""
+        """Print one paragraph."""
+        for part in textwrap.wrap(line, WIDTH) or [""]:
+            self._put(part)
+
+    def _put(self, line: str) -> None:
         print(line, flush=True)
         self._lines.append(line)
 
@@ -112,7 +118,7 @@ class Report:
         for row in texts:
             cells = [row[0].ljust(widths[0])]
             cells += [cell.rjust(width) for cell, width in zip(row[1:], widths[1:], strict=True)]
-            self.say("  ".join(cells).rstrip())
+            self._put("  ".join(cells).rstrip())
         self.say()
 
     def save(self) -> None:
