@@ -52,6 +52,10 @@ NARROWEST_SHARE = 0.04
 #: Fewest and most nodes of a curve.
 FEWEST_NODES, MOST_NODES = 3, 9
 
+#: Most coefficients of an interpolant. Beyond, the highest derivatives are left out: they
+#: are the noisiest, and nodes close together multiply their noise.
+MOST_COEFFICIENTS = 25
+
 #: Share of the grids' bar that the interpolation error may reach before a node is added.
 INTERPOLATION_SHARE = 0.5
 
@@ -190,35 +194,37 @@ class _Build:
                 ) from exc
             raise type(exc)(f"{where}: {exc.args[0]}") from exc
 
-    def _function(self, values: list[dict], key: str, orders: int | None = None) -> BandFunction:
+    def _function(self, values: list[dict], key: str, shorter: int) -> BandFunction:
+        orders = max(2, min(values[0][key].size, MOST_COEFFICIENTS // len(self.nodes))) - shorter
         taylor = np.array([v[key][:orders] for v in values])
         return BandFunction.from_series(self.band, tuple(self.nodes), taylor)
 
-    def _functions(self, values: list[dict], orders: int | None = None) -> dict[str, BandFunction]:
+    def _functions(self, values: list[dict], shorter: int = 0) -> dict[str, BandFunction]:
+        """Every function of the curve, from series ``shorter`` orders shorter than there are."""
         with_index = [
             {**v, "n_eff": _index_series(r, v)} for r, v in zip(self.resolved, values, strict=True)
         ]
         keys = [k for k in with_index[0] if k != "beta"]
-        return {k: self._function(with_index, k, orders) for k in keys}
+        return {k: self._function(with_index, k, shorter) for k in keys}
 
     def _values(self) -> list[dict]:
         return [r.values for r in self.resolved]
 
     def _settled(self) -> bool:
         omega = self.band.frequency(np.linspace(-1.0, 1.0, CHECK_POINTS))
-        full, short = (_index_figures(self._index(orders), omega) for orders in (None, -1))
+        full, short = (_index_figures(self._index(shorter), omega) for shorter in (0, 1))
         gaps = np.max(np.abs(full - short), axis=1)
         bars = [r.bar(partial(_node_figures, r.omega)) for r in self.resolved]
         return bool(np.all(gaps <= INTERPOLATION_SHARE * np.max(bars, axis=0)))
 
     def _surprise(self, node: Resolved) -> tuple[float, float]:
         """What the curve so far misses at a node that it has not seen."""
-        told = _index_figures(self._index(None), node.omega)
+        told = _index_figures(self._index(0), node.omega)
         miss = np.abs(told - _node_figures(node.omega, node.values))
         return float(miss[0]), float(miss[1] / C_UM_PER_PS * PER_UM_TO_PER_KM)
 
-    def _index(self, orders: int | None) -> BandFunction:
-        return self._functions(self._values(), orders)["n_eff"]
+    def _index(self, shorter: int) -> BandFunction:
+        return self._functions(self._values(), shorter)["n_eff"]
 
     def curve(
         self,
@@ -252,7 +258,7 @@ class _Build:
         for i, first in enumerate(self.resolved[0].alternates):
             values = [r.alternates[i].version for r in self.resolved]
             versions.append(first._replace(version=made(functions=self._functions(values))))
-        shorter = made(functions=self._functions(self._values(), -1))
+        shorter = made(functions=self._functions(self._values(), 1))
         versions.append(Alternate("interpolation", 1.0, shorter))
         return made(
             functions=self._functions(self._values()),

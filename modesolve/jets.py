@@ -32,7 +32,7 @@ from modesolve.eigen import Factorisation, Pencil, RawMode
 __all__ = ["Jet", "apply_series", "mode_jet"]
 
 #: Relative residual at which the singular solves stop, and the most passes allowed.
-JET_RESIDUAL = 1e-12
+JET_RESIDUAL = 1e-14
 MOST_PASSES = 60
 
 #: A solve that stalls above this is refused.
