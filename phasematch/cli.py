@@ -59,10 +59,12 @@ def command() -> None:
 @replace_option("Replace the results in a folder that holds some.")
 def run(design: str, changes: tuple[str, ...], folder: str, replace: bool) -> int:
     """Run a design: tables, maps and figures into a folder, a summary on stdout."""
+    from phasematch.outputs import check_output
     from phasematch.report import show, summary
     from phasematch.study import run_design
 
     checked = read(design, changes)
+    check_output(checked, folder, replace=replace)
     with working() as tell:
         outcome = run_design(checked, folder, replace=replace, progress=tell)
     show(out(), *summary(outcome))
@@ -90,7 +92,7 @@ def modes(
     from phasematch.report import modes_report
     from phasematch.study import section_of
 
-    check_file(output, replace)
+    check_file(output, replace, design)
     checked = read(design, changes)
     table = checked.tables.mode
     wavelength = checked.reference_um if wavelength_um is None else wavelength_um
@@ -116,7 +118,7 @@ def dispersion_verb(
     from phasematch.report import dispersion_report
     from phasematch.study import curve_table, solve_curve
 
-    check_file(output, replace)
+    check_file(output, replace, design)
     checked = read(design, changes)
     with working() as tell:
         result = curve_table(checked, solve_curve(checked, tell))
@@ -134,7 +136,7 @@ def channel(design: str, changes: tuple[str, ...], output: str | None, replace: 
     from phasematch import study
     from phasematch.report import channel_report
 
-    check_file(output, replace)
+    check_file(output, replace, design)
     checked = read(design, changes)
     table = checked.tables.channel
     if table is None:
@@ -155,7 +157,7 @@ def ring(design: str, changes: tuple[str, ...], output: str | None, replace: boo
     from phasematch import study
     from phasematch.report import ring_report, show
 
-    check_file(output, replace)
+    check_file(output, replace, design)
     checked = read(design, changes)
     table = checked.tables.ring
     if table is None:

@@ -56,7 +56,7 @@ def curve(
     """n_eff, n_g, beta2, D, area and gamma against wavelength."""
     from phasematch.study import curve_table, solve_curve
 
-    check_file(output, replace)
+    check_file(output, replace, design)
     if points is not None:
         changes = (*changes, f"band.points={points}")
     checked = read(design, changes)
@@ -82,7 +82,7 @@ def betas(
     from modesolve.tables import beta_table
     from phasematch.study import solve_curve
 
-    check_file(output, replace)
+    check_file(output, replace, design)
     checked = read(design, changes)
     pump = checked.reference_um if pump_um is None else pump_um
     with working() as tell:
@@ -115,7 +115,7 @@ def taper(
     from modesolve.tables import taper_table
     from phasematch.study import section_of
 
-    check_file(output, replace)
+    check_file(output, replace, design)
     checked = read(design, changes)
     mode = checked.tables.mode
     with working() as tell:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import os
 from collections.abc import Callable, Iterator
 from contextlib import contextmanager
 from pathlib import Path
@@ -64,15 +65,19 @@ def notes(lines: Any) -> None:
         click.echo("\n" + click.wrap_text(LASER_CAUTION, 80))
 
 
-def check_file(path: str | None, replace: bool) -> None:
+def check_file(path: str | None, replace: bool, design: str) -> None:
     """Refuse a file named on the command line before any work is done."""
     if path is None:
         return
+    if not path:
+        raise click.BadParameter("the name is empty; give a file", param_hint="-o")
     if Path(path).suffix.lower() not in (".csv", ".h5"):
         raise click.BadParameter(f"{path}: the name must end in .csv or .h5", param_hint="-o")
     if not Path(path).absolute().parent.is_dir():
         raise StorageError(f"cannot write {path}: its folder does not exist; make it first")
     check_free(path, replace=replace)
+    if os.path.exists(path) and os.path.samefile(path, design):
+        raise StorageError(f"{path} is the design and would be replaced; give another name")
 
 
 def save(result: Result, path: str | None) -> None:

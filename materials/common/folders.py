@@ -11,7 +11,7 @@ import contextlib
 import os
 import secrets
 import shutil
-from collections.abc import Iterator
+from collections.abc import Iterable, Iterator
 from pathlib import Path
 
 from materials.common.errors import StorageError
@@ -21,7 +21,9 @@ from materials.common.files import flush, taken
 LISTING = "files.txt"
 
 
-def check_target(folder: str | os.PathLike[str], *, replace: bool = False) -> Path:
+def check_target(
+    folder: str | os.PathLike[str], *, replace: bool = False, names: Iterable[str] = ()
+) -> Path:
     """Refuse an output folder that cannot be used, before any work is done.
 
     Parameters
@@ -30,6 +32,8 @@ def check_target(folder: str | os.PathLike[str], *, replace: bool = False) -> Pa
         The folder to be written. It may be missing or empty.
     replace : bool
         Whether a folder that holds something may be replaced.
+    names : iterable of str
+        Files that are to be written into it, as far as they are known.
 
     Returns
     -------
@@ -39,8 +43,9 @@ def check_target(folder: str | os.PathLike[str], *, replace: bool = False) -> Pa
     Raises
     ------
     StorageError
-        It is a file, holds something and ``replace`` is False, is the folder one works
-        in, or its parent cannot be written to.
+        It is a file, holds something and ``replace`` is False, holds a file of one of the
+        names that no run wrote, is the folder one works in, or its parent cannot be
+        written to.
     """
     target = Path(os.path.realpath(folder))
     if target.exists() and not target.is_dir():
@@ -52,12 +57,40 @@ def check_target(folder: str | os.PathLike[str], *, replace: bool = False) -> Pa
         raise StorageError(
             f"the output folder {folder} is the one you are working in; name a folder inside it"
         )
+    _check_names(target, [*names, LISTING])
     parent = _nearest_folder(target)
     if not os.access(parent, os.W_OK | os.X_OK):
         raise StorageError(
             f"cannot write {folder}: no permission in {parent}; choose another place"
         )
     return target
+
+
+def _own_files(folder: Path) -> set[str]:
+    """Names that an earlier run listed as its own; a listing that lacks itself is not ours."""
+    listing = folder / LISTING
+    if not listing.is_file():
+        return set()
+    listed = set(listing.read_text(encoding="utf-8", errors="replace").splitlines())
+    return listed if LISTING in listed else set()
+
+
+def _check_names(folder: Path, names: Iterable[str]) -> None:
+    """Refuse to write over what no run wrote."""
+    if not folder.is_dir():
+        return
+    own = _own_files(folder)
+    for name in names:
+        place = folder / name
+        if os.path.lexists(place) and (name not in own or _real_folder(place)):
+            raise StorageError(
+                f"{name} in {folder.name} was not written by an earlier run (it is not in its "
+                f"{LISTING}); move it away, or give another folder"
+            )
+
+
+def _real_folder(path: Path) -> bool:
+    return path.is_dir() and not path.is_symlink()
 
 
 def _nearest_folder(target: Path) -> Path:
@@ -68,8 +101,8 @@ def _nearest_folder(target: Path) -> Path:
 def whole_folder(folder: str | os.PathLike[str], *, replace: bool = False) -> Iterator[Path]:
     """Give a folder to write to; put it in place of ``folder`` on a clean exit.
 
-    With ``replace``, files that an earlier run listed as its own vanish; any other file
-    in the folder is kept, unless a new one has its name.
+    With ``replace``, files that an earlier run listed as its own vanish; anything else in
+    the folder is kept, and a new file that has the name of such a thing is refused.
 
     Raises
     ------
@@ -84,6 +117,7 @@ def whole_folder(folder: str | os.PathLike[str], *, replace: bool = False) -> It
             staging.mkdir()
             yield staging
             _list_files(staging)
+            _check_names(target, _names(staging))
             _put_in_place(staging, target)
         except StorageError:
             raise
@@ -97,8 +131,14 @@ def whole_folder(folder: str | os.PathLike[str], *, replace: bool = False) -> It
 
 
 def _list_files(staging: Path) -> None:
-    names = sorted(p.relative_to(staging).as_posix() for p in staging.rglob("*") if p.is_file())
-    (staging / LISTING).write_text("\n".join([*names, LISTING]) + "\n", encoding="utf-8")
+    text = "\n".join([*_names(staging), LISTING]) + "\n"
+    (staging / LISTING).write_text(text, encoding="utf-8")
+
+
+def _names(folder: Path) -> list[str]:
+    """Everything in a folder that is no folder itself, below it as well."""
+    found = (p for p in folder.rglob("*") if not _real_folder(p))
+    return sorted(p.relative_to(folder).as_posix() for p in found)
 
 
 def _put_in_place(staging: Path, target: Path) -> None:
@@ -120,10 +160,11 @@ def _put_in_place(staging: Path, target: Path) -> None:
 
 def _keep_other_files(older: Path, target: Path) -> None:
     """Move what no run wrote from the older folder to the new one."""
-    listing = older / LISTING
-    own = set(listing.read_text(encoding="utf-8").splitlines()) if listing.is_file() else set()
-    for path in sorted(p for p in older.rglob("*") if p.is_file() or p.is_symlink()):
-        name = path.relative_to(older)
-        if name.as_posix() not in own and not (target / name).exists():
+    own = _own_files(older)
+    for name in _names(older):
+        if name not in own:
             (target / name).parent.mkdir(parents=True, exist_ok=True)
-            os.rename(path, target / name)
+            os.rename(older / name, target / name)
+    for path in older.rglob("*"):  # folders that hold nothing are the user's too
+        if _real_folder(path):
+            (target / path.relative_to(older)).mkdir(parents=True, exist_ok=True)

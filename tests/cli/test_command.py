@@ -18,6 +18,8 @@ import phasematch
 from materials.common import errors
 from phasematch import cli
 from phasematch.caution import LASER_CAUTION
+from phasematch.design_file import read_design
+from phasematch.outputs import file_names
 
 DESIGN = """
 [cross_section]
@@ -87,6 +89,7 @@ def test_run_writes_everything_and_says_it_short(idlermap, here):
         "design.toml", "summary.txt", "files.txt",
     }  # fmt: skip
     assert set((here / "out" / "files.txt").read_text().split()) == written
+    assert set(file_names(read_design("design.toml"))) == written
     assert re.search(r"TE0 +1\.83454\d+\(\d+\)", out)
     assert " ".join(LASER_CAUTION.split()) in " ".join(out.split())
     assert max(map(len, out.splitlines())) <= 80
@@ -132,12 +135,45 @@ def test_a_full_folder_is_refused_before_any_work(idlermap, here):
     code, out, err = idlermap("run", "design.toml", "-o", "out")
     assert (code, out) == (cli_codes().STORAGE, "")
     assert err == (
-        "idlermap: the output folder out is not empty; give another name, or --replace to replace it\n"
+        "idlermap: the output folder out is not empty; give another name, or --replace to "
+        "replace it\n"
     )
     arguments = ["run", "design.toml", "-o", "out", "--replace", "--set", 'output.figures="none"']
     assert idlermap(*arguments)[0] == 0
     assert (here / "out" / "mine.txt").read_text() == "mine"
     assert (here / "out" / "dispersion.csv").exists()
+
+
+def test_replacing_never_takes_the_design_or_a_file_of_the_user(idlermap, here):
+    """Exit 5 and one line before any work; the folder stays as it was."""
+    out, arguments = here / "out", ["-o", "out", "--replace"]
+    out.mkdir()
+    (out / "design.toml").write_text(DESIGN)
+    code, said, err = idlermap("run", "out/design.toml", *arguments)
+    assert (code, said, len(err.splitlines())) == (5, "", 1) and "out/design.toml is the" in err
+    (out / "files.txt").write_text("design.toml\nfiles.txt\n")  # also when a run listed it
+    assert idlermap("run", "out/design.toml", *arguments)[0] == 5
+    (out / "modes.csv").write_text("mine")
+    code, said, err = idlermap("run", "design.toml", *arguments)
+    assert (code, said, len(err.splitlines())) == (5, "", 1)
+    assert "modes.csv in out was not written by an earlier run" in err
+    assert (out / "design.toml").read_text() == DESIGN
+    assert (out / "modes.csv").read_text() == "mine"
+    assert sorted(p.name for p in out.iterdir()) == ["design.toml", "files.txt", "modes.csv"]
+
+
+def test_a_table_never_replaces_the_design(idlermap, here):
+    (here / "design.csv").write_text(DESIGN)
+    code, _, err = idlermap("modes", "design.csv", "-o", "design.csv", "--replace")
+    assert code == 5 and "design.csv is the design" in err
+    assert (here / "design.csv").read_text() == DESIGN
+
+
+def test_the_names_of_a_run_are_known_before_it(here):
+    names = file_names(read_design("design.toml", ["ring.pump_w=0.01", 'output.figures="pdf"']))
+    assert {"pair_rates.csv", "channel_map.pdf", "files.txt"} <= set(names)
+    bare = file_names(read_design("design.toml", ['output.figures="none"']))
+    assert "pair_rates.csv" not in bare and not any(n.endswith("none") for n in bare)
 
 
 def test_modes_columns_in_order(idlermap):

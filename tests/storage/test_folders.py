@@ -50,6 +50,39 @@ def test_replacing_drops_own_files_and_keeps_others(tmp_path):
     assert names(tmp_path) == ["out"]
 
 
+@pytest.mark.parametrize("listing", ["", "a.txt\nb.txt\n", None])
+def test_what_no_run_wrote_is_never_overwritten(tmp_path, listing):
+    """Unlisted, or listed by a files.txt that is not ours, or with no listing at all."""
+    out = tmp_path / "out"
+    out.mkdir()
+    (out / "a.txt").write_text("mine")
+    if listing is not None:
+        (out / "files.txt").write_text(listing)
+    before = names(out)
+    for known in ([], ["a.txt"]):
+        with pytest.raises(StorageError, match=r"(a|files).txt in out was not written by"):
+            check_target(out, replace=True, names=known)
+            write(out, replace=True, a="2")
+    assert (out / "a.txt").read_text() == "mine"
+    assert names(out) == before and names(tmp_path) == ["out"]
+
+
+def test_folders_and_links_of_the_user_are_kept(tmp_path):
+    out = tmp_path / "out"
+    write(out, a="1")
+    (out / "empty").mkdir()
+    (tmp_path / "target.txt").write_text("far")
+    (out / "link.txt").symlink_to(tmp_path / "target.txt")
+    write(out, replace=True, a="2")
+    assert names(out) == ["a.txt", "empty", "files.txt", "link.txt"]
+    for name in ("empty", "link"):
+        (out / f"{name}.txt").unlink(missing_ok=True)
+        (out / f"{name}.txt").mkdir()
+        with pytest.raises(StorageError, match="not written by an earlier run"):
+            write(out, replace=True, **{name: "3"})
+    assert (tmp_path / "target.txt").read_text() == "far"
+
+
 @pytest.mark.parametrize("error", [KeyboardInterrupt, RuntimeError])
 def test_a_failed_run_changes_nothing(tmp_path, error):
     out = tmp_path / "out"
