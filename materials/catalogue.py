@@ -132,7 +132,7 @@ def _load(key: str) -> Medium:
     stem, fraction = _table_of(key)
     table = _read(stem)
     entry = _entry(key, stem, fraction)
-    caveats = [*entry.caveats, *_memory_caveats(entry)]
+    caveats = [*map(in_words, entry.caveats), *_memory_caveats(entry)]
     formula, coefficients, fit, of_fit = _law(table, fraction)
     if fit is not None:
         low, high = fit.window_um
@@ -150,16 +150,16 @@ def _load(key: str) -> Medium:
         axis=entry.axis,
         range_um=entry.range_um,
         temperature_degc=entry.temperature_degc,
-        citation=entry.citation,
+        citation=in_words(entry.citation),
         n2_m2_per_w=entry.n2_m2_per_w,
         n2_citation=_used(entry.n2),
-        n2_spread=entry.n2_spread,
+        n2_spread=in_words(entry.n2_spread),
         dn_dt_per_k=entry.dn_dt_per_k,
         dn_dt_citation=_used(entry.dn_dt),
-        dn_dt_spread=entry.dn_dt_spread,
+        dn_dt_spread=in_words(entry.dn_dt_spread),
         two_photon_m_per_w=entry.two_photon_m_per_w,
         two_photon_citation=_used(entry.two_photon),
-        two_photon_spread=entry.two_photon_spread,
+        two_photon_spread=in_words(entry.two_photon_spread),
         caveats=tuple(caveats),
         missing=entry.missing,
         fit=fit,
@@ -295,7 +295,9 @@ def _memory_caveats(entry: Entry) -> list[str]:
     for kind, what in _KINDS.items():
         records = getattr(entry, kind)
         if records and "from memory" in records[0].source_kind:
-            out.append(f"{what} {records[0].source_kind}")
+            kind_words = records[0].source_kind
+            value = "value " if kind_words.startswith("from memory") else ""
+            out.append(in_words(f"{what}: {value}{kind_words}"))
     return out
 
 
@@ -306,4 +308,22 @@ def _used(records: tuple[Record, ...]) -> str:
     first = records[0]
     at = "" if first.wavelength_um is None else f", at {first.wavelength_um:g} um"
     remark = f"; {first.remark}" if first.remark else ""
-    return f"{first.citation}{at} [{first.source_kind}]{remark}"
+    return in_words(f"{first.citation}{at} [{first.source_kind}]{remark}")
+
+
+def in_words(text: str) -> str:
+    """A text of a table with what it says of its sources in plain words.
+
+    Examples
+    --------
+    >>> in_words("n2: value from memory (high)")
+    'n2: value from memory, not checked against its source (high confidence)'
+    >>> in_words("law from memory (high), checked against the published table")
+    'law from memory (high confidence), checked against the published table'
+    """
+    text = re.sub(r"from memory \((\w+)\)(?=, checked)", r"from memory (\1 confidence)", text)
+    return re.sub(
+        r"from memory \((\w+)\)",
+        r"from memory, not checked against its source (\1 confidence)",
+        text,
+    )

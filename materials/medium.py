@@ -282,7 +282,7 @@ class Medium:
         """Copy that also works outside its measured range, and says so in its caveats."""
         if self.range_um is None or self.extrapolate:
             return self
-        caveat = f"{self.key} may be extrapolated outside {self._range_words()}"
+        caveat = f"may be extrapolated outside {self._range_words()}"
         return replace(self, extrapolate=True, caveats=(*self.caveats, caveat))
 
     def at_temperature(self, temperature_degc: float) -> Medium:
@@ -311,10 +311,10 @@ class Medium:
         caveats, start = self.caveats, self.temperature_degc
         if start is None:
             start = ROOM_TEMPERATURE_DEGC
-            caveats = (*caveats, f"{self.key} states no temperature: 20 degC taken")
+            caveats = (*caveats, "states no temperature: 20 degC taken")
         change = temperature - start
         if abs(change) > 100.0:
-            caveats = (*caveats, f"dn/dT of {self.key} used linearly over {change:.0f} K")
+            caveats = (*caveats, f"dn/dT used linearly over {change:.0f} K")
         shift = self.index_shift + self.dn_dt_per_k * change
         return replace(self, temperature_degc=temperature, index_shift=shift, caveats=caveats)
 
