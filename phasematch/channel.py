@@ -21,7 +21,7 @@ from materials.common.constants import DB_PER_E_FOLD, TWO_PI, omega_from_um
 from materials.common.errors import InputError
 from materials.common.results import ErrorBars, frozen_array
 from phasematch import mixing
-from phasematch.caution import LASER_CAUTION
+from phasematch.caution import power_notes
 from phasematch.channel_results import ChannelMap, ConversionBand, PairFlux
 from phasematch.conversion import BandEdges, find_band
 from phasematch.curve_protocol import Curve, error_bar, gamma_or_nan, snap, values_with_bars
@@ -343,7 +343,7 @@ class Channel:
                 f"gamma P L_eff reaches {phase:.2g}: the forms with loss hold for a weak pump, "
                 "well below 1; take the numbers as estimates"
             )
-        return (*notes, LASER_CAUTION)
+        return (*notes, *power_notes(self.curve))
 
     # ------------------------------------------------------------ the work
 

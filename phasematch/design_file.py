@@ -17,6 +17,7 @@ from typing import Any
 
 from pydantic import ValidationError
 
+from materials.common.caution import LASER_CAUTION, states_power
 from materials.common.constants import middle_um
 from materials.common.errors import DesignFileError, StorageError, UnknownName
 from materials.common.results import Provenance
@@ -56,6 +57,8 @@ class Design:
         lines = ["# Resolved design: every default written out. It can be run again as it is."]
         if provenance is not None:
             lines += [f"# {k}: {json.dumps(v)}" for k, v in provenance.as_dict().items()]
+        if states_power(self.as_dict()):
+            lines.append(f"# {LASER_CAUTION}")
         for name, table in self.as_dict().items():
             lines += ["", f"[{name}]"]
             lines += [f"{key} = {toml_value(value)}" for key, value in table.items()]

@@ -216,8 +216,8 @@ def channel_map_figure(result: ChannelMap, *, span_db: float = 40.0) -> Figure:
 
 def _channel_title(result: ChannelMap) -> str:
     length = result.inputs.get("length_mm")
-    about = [] if length is None else [f"{length:g} mm"]
-    return ", ".join([*about, f"{result.pump_w:g} W; line: $-$3 dB of each pump"])
+    about = "" if length is None else f"{length:g} mm; "
+    return f"{about}line: $-$3 dB about the pump"
 
 
 def _marked_level(axes: Any, result: ChannelMap, values: np.ndarray) -> None:

@@ -20,7 +20,7 @@ from materials.common.constants import (
 )
 from materials.common.results import ErrorBars, frozen_array
 from phasematch import cavity
-from phasematch.caution import LASER_CAUTION
+from phasematch.caution import power_notes
 from phasematch.curve_protocol import Curve, gamma_or_nan, values_with_bars
 from phasematch.reasons import GAMMA_UNKNOWN, OUTSIDE_BAND
 from phasematch.resonances import find_lines, order_range
@@ -128,7 +128,7 @@ def _notes(ring: Ring, hot: Hot, low_gain: str) -> tuple[str, ...]:
         notes.append("at or above threshold: no rates are given, the pump is no longer what it was")
     elif top > _HIGH:
         notes.append(f"x reaches {top:.2g} of the threshold's 1: {low_gain} hold at low gain")
-    return (*notes, LASER_CAUTION)  # thresholds are powers, also where the pump is off
+    return (*notes, *power_notes(ring.curve))  # thresholds are powers, also where the pump is off
 
 
 def spontaneous(

@@ -33,6 +33,7 @@ from typing import Any
 
 import numpy as np
 
+from materials.common.caution import LASER_CAUTION, states_power
 from materials.common.csv_file import csv_text, write_csv
 from materials.common.files import Variable, plain
 from materials.common.hdf5_file import write_hdf5
@@ -246,10 +247,14 @@ class Result:
     def _about(self) -> dict[str, Any]:
         """Title, inputs, notes and provenance as the file writers want them."""
         provenance = getattr(self, "provenance", None)
+        inputs = getattr(self, "inputs", None) or {}
+        notes = tuple(getattr(self, "notes", ()) or ())
+        if states_power(inputs) and LASER_CAUTION not in notes:
+            notes = (*notes, LASER_CAUTION)
         return {
             "title": _title(self),
-            "inputs": getattr(self, "inputs", None) or {},
-            "notes": tuple(getattr(self, "notes", ()) or ()),
+            "inputs": inputs,
+            "notes": notes,
             "provenance": provenance.as_dict() if provenance is not None else {},
         }
 

@@ -263,6 +263,22 @@ def test_files_of_single_verbs_carry_the_whole_design(idlermap, here):
         assert line in header
 
 
+def test_every_file_that_states_a_pump_power_carries_the_caution(idlermap, here):
+    assert idlermap("run", "design.toml", "-o", "out", "--set", 'output.figures="none"')[0] == 0
+    assert idlermap("export", "betas", "design.toml", "-o", "out/betas.csv")[0] == 0
+    for path in (here / "out").iterdir():
+        if path.suffix == ".h5":
+            with xarray.open_dataset(path, engine="h5netcdf") as data:
+                text = data.attrs["inputs"] + "\n" + data.attrs["notes"]
+        else:
+            text = path.read_text()
+        assert (LASER_CAUTION in text) == ("pump_w" in text or path.stem == "summary"), path.name
+    unpowered = (here / "design.toml").read_text().split("[channel]")[0]
+    (here / "bare.toml").write_text(unpowered)
+    assert idlermap("export", "curve", "bare.toml", "-o", "curve.csv")[0] == 0
+    assert "Caution" not in (here / "curve.csv").read_text()
+
+
 def test_extrapolation_is_marked_on_results(idlermap, here):
     film = 'cross_section.core="Si3N4-Philipp1973"'  # measured up to 1.24 um
     code, _, err = idlermap("modes", "design.toml", "--set", film)
@@ -271,7 +287,7 @@ def test_extrapolation_is_marked_on_results(idlermap, here):
     for verb in ("modes", "dispersion", "channel", "ring"):
         code, _, err = idlermap(verb, "design.toml", "-o", f"{verb}.csv", *wider)
         assert code == 0
-        note = "Si3N4-Philipp1973 may be extrapolated outside"
+        note = "Si3N4-Philipp1973: may be extrapolated outside"
         assert note in err and note in (here / f"{verb}.csv").read_text(), verb
 
 

@@ -4,16 +4,19 @@ from __future__ import annotations
 
 import dataclasses
 import math
+from types import SimpleNamespace
 
 import numpy as np
 import pytest
 from scipy.integrate import solve_ivp
 
+import materials
 from materials.common.constants import TWO_PI, omega_from_um
 from materials.common.errors import InputError, OutOfRange
 from phasematch.caution import LASER_CAUTION
 from phasematch.channel import Channel
 from phasematch.mixing import idler_um
+from phasematch.ring import Ring
 
 from ..synthetic_curve import curve, with_bars
 
@@ -280,6 +283,30 @@ def test_strong_pump_with_loss_is_noted():
     c = Channel(curve(gamma=100.0), length_mm=50, loss_db_per_cm=1.0)
     assert any("weak pump" in note for note in c.map([1.55], [1.5], 1.0).notes)
     assert not any("weak pump" in note for note in c.map([1.55], [1.5], 1e-3).notes)
+
+
+def test_media_that_absorb_two_photons_are_noted_with_every_power():
+    wire = SimpleNamespace(
+        media=[materials.load(key) for key in ("Si-Li1980-293K", "SiO2-Malitson1965")]
+    )
+    said = (
+        "two-photon absorption (5e-12 m/W for Si-Li1980-293K) and free carriers are not in "
+        "these numbers"
+    )
+    bent = curve(section=wire, bend_radius_um=100.0)
+    channel = Channel(bent, length_mm=10)
+    ring = Ring(bent, radius_um=100.0, q_intrinsic=1e5, q_coupling=1e5)
+    for result in (
+        channel.map([1.55], [1.5], 0.1),
+        channel.pair_flux(1.55, 0.1),
+        channel.conversion_band(1.55, 0.1),
+        ring.spontaneous(1.55, 1e-4, 2),
+        ring.stimulated(1.55, 1e-4, 1e-6, 2),
+    ):
+        assert result.notes[-2:] == (said, LASER_CAUTION)
+    assert said not in channel.conversion_band(1.55, 0.0).notes
+    glass = curve(section=SimpleNamespace(media=wire.media[1:]))
+    assert not any("two-photon" in n for n in Channel(glass, length_mm=10).pair_flux(1.55, 1).notes)
 
 
 def test_bad_input_gives_one_clear_line(channel):
