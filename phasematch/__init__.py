@@ -9,6 +9,24 @@ every number goes out with its error bar::
     ring = phasematch.Ring(curve, radius_um=100, q_intrinsic=2e6, q_coupling=2e6)
     ring.pairs(pump_um=1.55, count=60)             # which resonances line up
 
+The rooms are in the order of the work::
+
+    curve_protocol  what is needed of a curve; bars of what follows from it
+    mixing          energy, mismatch, gain; weak_mixing: with loss
+    waves           the three waves of a channel
+    quadrature, conversion, pair_flux
+                    its band and its flux
+    channel         `Channel`
+    resonances, cavity, bend_note
+                    where lines are, what light does in them, what bending changes
+    ring            `Ring`; ring_power: with light in it
+    reasons, caution
+                    why numbers are missing; what goes with pump powers
+    design_*, starter, study
+                    design files and their running
+    report, figures, exit_codes, cli*
+                    the command
+
 Neither click nor Matplotlib is loaded by importing this package.
 """
 

@@ -75,6 +75,7 @@ def test_width_at_moves_the_same_wall():
     assert a.n_eff == pytest.approx(b.n_eff, abs=2e-9)
 
 
+@pytest.mark.slow
 @pytest.mark.parametrize("slab", [0.0, 0.09])
 @pytest.mark.parametrize("angle", [60.0, 75.0, 105.0, 120.0])
 def test_silicon_walls_from_60_to_120_degrees(angle, slab):

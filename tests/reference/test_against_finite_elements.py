@@ -94,6 +94,7 @@ def live(case: dict) -> GuidedMode:
         "silicon-rib-air-above-TE",
     ],
 )
+@pytest.mark.slow
 def test_live_solve(name):
     case = CONVERGED[name]
     mode, other = ours(name), live(case)

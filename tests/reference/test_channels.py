@@ -95,7 +95,9 @@ def test_dispersive_cores(core, size, n_eff, n_tol, n_group, group_tol, beta2, b
     "rib 3.44/3.34/air, width 2, height 1.3, side film 0.2 (computed)",
     "8",
 )
-@pytest.mark.parametrize(("kind", "n_eff"), [("TE0", 3.3887005), ("TM0", 3.3878673)])
+@pytest.mark.parametrize(
+    ("kind", "n_eff"), [pytest.param("TE0", 3.3887005, marks=pytest.mark.slow), ("TM0", 3.3878673)]
+)
 def test_semiconductor_rib(kind, n_eff):
     mode = solve(kind, 3.44, 3.34, 1.0, 2.0, 1.3, slab_um=0.2)
     assert abs(mode.n_eff - n_eff) < 6e-7  # twice the reference's last-digit uncertainty

@@ -95,6 +95,7 @@ def test_error_keys_are_the_methods(curve):
         assert callable(getattr(curve, key))
 
 
+@pytest.mark.slow
 def test_zero_dispersion_wavelength_has_its_bar():
     curve = dispersion(nitride(), 1.0, 2.2)
     zeros, bars = curve.zero_dispersion_um(), curve.error["zero_dispersion_um"]()
