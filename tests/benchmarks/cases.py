@@ -11,9 +11,10 @@ from reference.finite_element_guides import Guide, channel
 
 import modesolve
 from materials.common.constants import C_UM_PER_PS, omega_from_um
-from modesolve.layout import Layout, decay_constant
-from modesolve.maps import Axis, Margins
-from modesolve.operators import Boundary
+from modesolve.eigen import dissection_order
+from modesolve.layout import Layout, decay_constant, operators_on
+from modesolve.maps import Axis, Box
+from modesolve.operators import Boundary, topology_of
 
 CONVERGED = tomllib.loads(
     (Path(__file__).parents[1] / "reference" / "channel_values.toml").read_text(encoding="utf-8")
@@ -23,6 +24,12 @@ CONVERGED = tomllib.loads(
 TE_BOUNDARY = Boundary()
 #: On a quarter, Hx vanishes on the horizontal one.
 TE_QUARTER = Boundary(bottom="magnetic")
+
+
+def forget() -> None:
+    """Empty what the package keeps of grids, so that a timed solve starts from nothing."""
+    for kept in (dissection_order, topology_of, operators_on):
+        kept.cache_clear()
 
 
 @dataclass(frozen=True)
@@ -75,10 +82,10 @@ class Case:
         background = self.section.cladding.index(self.wavelength_um)
         return 1.0 / decay_constant(self.omega, self.n_eff, background)
 
-    def margins(self, decays: float) -> Margins:
-        """Margins of so many decay lengths on the open sides."""
+    def box(self, decays: float) -> Box:
+        """A box that reaches so many decay lengths out on the open sides."""
         width = decays * self.decay_um
-        return Margins(right=width, bottom=width, top=width)
+        return Box(right=width, bottom=width, top=width)
 
     @property
     def elements_guide(self) -> Guide:

@@ -10,7 +10,7 @@ from __future__ import annotations
 
 import numpy as np
 import scipy.sparse as sp
-from cases import NITRIDE, TE_BOUNDARY
+from cases import NITRIDE, TE_BOUNDARY, forget
 from harness import Report, in_turns, seconds_of
 from scipy.sparse.linalg import SuperLU, splu
 
@@ -23,7 +23,7 @@ LEAST_RATIO = 2.0
 
 def shifted_matrix(refinement: int) -> tuple[sp.csr_array, tuple[int, int]]:
     """A - shift Mn of nitride TE0 on one graded grid, and the grid's shape."""
-    grid = NITRIDE.layout.grid(NITRIDE.margins(11.0), refinement)
+    grid = NITRIDE.layout.grid(NITRIDE.box(11.0), refinement)
     permittivity = NITRIDE.layout.permittivity(NITRIDE.omega, 0)[:, 0]
     pencil = Pencil(NITRIDE.layout.operators(grid, TE_BOUNDARY), NITRIDE.k0, permittivity)
     shift = (NITRIDE.k0 * NITRIDE.n_eff) ** 2 * (1.0 + 1e-4)
@@ -53,7 +53,7 @@ def run() -> None:
     rows = []
     for refinement, rounds in SIZES:
         matrix, shape = shifted_matrix(refinement)
-        dissection_order.cache_clear()
+        forget()
         order_seconds, order = seconds_of(lambda shape=shape: dissection_order(shape, TE_BOUNDARY))
         as_columns = sp.csc_array(matrix)
         default = multiplications(splu(as_columns))

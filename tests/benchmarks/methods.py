@@ -12,7 +12,7 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 import scipy.sparse as sp
-from cases import TE_BOUNDARY, TE_QUARTER, Case
+from cases import TE_BOUNDARY, TE_QUARTER, Case, forget
 from harness import Stages
 from meshes import COARSE, Mesh
 from reference import finite_elements
@@ -23,7 +23,7 @@ from modesolve import eigen
 from modesolve.eigen import Pencil, dissection_order, nearest_modes
 from modesolve.grid import Grid
 from modesolve.layout import Layout
-from modesolve.maps import EVEN, Grading, Margins, ProductMap, Segment
+from modesolve.maps import EVEN, Box, Grading, ProductMap, Segment
 from modesolve.operators import Boundary
 from modesolve.refine import neville
 
@@ -69,9 +69,9 @@ class Ladder:
         """A lean ladder; the more grids, the smaller the error and the wider the margins."""
         return cls(refinements, True, 8.0 if len(refinements) <= 3 else 11.0)
 
-    def margins(self, case: Case) -> Margins:
-        """Margins of the box."""
-        return case.margins(self.decays)
+    def box(self, case: Case) -> Box:
+        """The box solved in."""
+        return case.box(self.decays)
 
     def finer(self) -> tuple[Ladder, Ladder]:
         """The same one grid higher, and with one grid more."""
@@ -81,8 +81,8 @@ class Ladder:
 
     def unknowns(self, case: Case) -> int:
         """Unknowns of all grids together."""
-        layout, margins = self.layout(case), self.margins(case)
-        shapes = [layout.grid(margins, m).shape for m in self.refinements]
+        layout, box = self.layout(case), self.box(case)
+        shapes = [layout.grid(box, m).shape for m in self.refinements]
         return sum(len(dissection_order(shape, self.boundary)) for shape in shapes)
 
     def __str__(self) -> str:
@@ -94,14 +94,14 @@ LEAN = Grading(between=3.0, outwards=3.0, far_share=0.4)
 
 def ladder_index(case: Case, ladder: Ladder, stages: Stages) -> float:
     """Index from a ladder of graded grids, every grid factorised in its own order."""
-    layout, boundary, margins = ladder.layout(case), ladder.boundary, ladder.margins(case)
+    layout, boundary, box = ladder.layout(case), ladder.boundary, ladder.box(case)
     permittivity = layout.permittivity(case.omega, 0)[:, 0]
-    dissection_order.cache_clear()
+    forget()
     squares: list[float] = []
     with stages.inside((eigen, "splu", FACTORISATION)):
         for level, refinement in enumerate(ladder.refinements):
             with stages(MESH):
-                grid = layout.grid(margins, refinement)
+                grid = layout.grid(box, refinement)
                 dissection_order(grid.shape, boundary)
             with stages(ASSEMBLY):
                 pencil = Pencil(layout.operators(grid, boundary), case.k0, permittivity)
@@ -136,8 +136,9 @@ def even_index(case: Case, step_um: float, stages: Stages) -> tuple[float, int]:
     shift = case.k0**2 * permittivity.max()
     unknowns = 0
     for step in (max(4.0 * step_um, 0.1 * case.section.height_um), step_um):
+        forget()
         with stages(MESH):
-            grid = even_grid(case, step, case.margins(EVEN_DECAYS))
+            grid = even_grid(case, step, case.box(EVEN_DECAYS))
         with stages(ASSEMBLY):
             pencil = Pencil(case.layout.operators(grid, TE_BOUNDARY), case.k0, permittivity)
         with stages(ITERATION):
@@ -146,18 +147,18 @@ def even_index(case: Case, step_um: float, stages: Stages) -> tuple[float, int]:
     return math.sqrt(shift) / case.k0, unknowns
 
 
-def even_grid(case: Case, step_um: float, margins: Margins) -> Grid:
+def even_grid(case: Case, step_um: float, box: Box) -> Grid:
     """Grid of equal cells, as near to ``step_um`` as whole numbers of them allow."""
     half, height = 0.5 * case.section.width_um, case.section.height_um
 
     def segment(kind, start, length) -> Segment:
         return Segment(kind, start, length, max(2, round(abs(length) / step_um)), EVEN)
 
-    across = [segment("from_mirror", 0.0, half), segment("outer_high", half, margins.right)]
+    across = [segment("from_mirror", 0.0, half), segment("outer_high", half, box.right)]
     up = [
-        segment("outer_low", 0.0, -margins.bottom),
+        segment("outer_low", 0.0, -box.bottom),
         segment("inner", 0.0, height),
-        segment("outer_high", height, margins.top),
+        segment("outer_high", height, box.top),
     ]
     labels = [np.repeat(np.arange(len(c)), [s.cells for s in c]) for c in (across, up)]
     return Grid.on(ProductMap(across, up), *labels)
