@@ -43,6 +43,7 @@ def test_the_shift_goes_as_the_square_of_the_curvature(straight):
     assert near > 0.0  # at the core's middle; the field moves out to a longer path
 
 
+@pytest.mark.slow
 def test_left_and_right_are_mirror_images():
     right, left = first(nitride(8.0)), first(nitride(-8.0))
     assert left.n_eff == pytest.approx(right.n_eff, abs=1e-11)
@@ -61,6 +62,7 @@ def test_the_field_is_pushed_outwards():
     assert 0.05 < centre < 0.5
 
 
+@pytest.mark.slow
 def test_loss_grows_as_the_bend_tightens_and_has_its_bar():
     losses = []
     for radius in (8.0, 6.0, 5.0):
@@ -70,6 +72,7 @@ def test_loss_grows_as_the_bend_tightens_and_has_its_bar():
     assert losses[0] < 0.2 * losses[1] < 0.2 * losses[2]
 
 
+@pytest.mark.slow
 def test_a_taller_ladder_stays_inside_the_bars():
     mode = first(nitride(6.0))
     fine = solve_modes(nitride(6.0), 1.55, 1, ladder=(3, 4, 5, 6, 8))[0]
@@ -94,6 +97,7 @@ def test_silicon_wire_bent_to_one_and_a_half_micrometres():
     assert quarter == pytest.approx(mode.loss_db_per_cm * 1.5e-4 * math.pi / 2.0)
 
 
+@pytest.mark.slow
 def test_curve_of_a_bent_guide():
     curve = dispersion(nitride(6.0), 1.5, 1.6)
     mode = first(nitride(6.0), 1.53)
