@@ -108,8 +108,8 @@ def dispersion(
     for end in (band.low, band.high):
         layout.permittivity(end, 0)  # a medium whose table ends inside the band speaks now
     check_core(layout, omega_from_um(reference))
-    # the search only has to tell the modes apart: a grid less will do
-    start = find_labelled(layout, omega_from_um(reference), mode, ladder[: max(4, len(ladder) - 1)])
+    # the search only has to tell the modes apart: few grids and a short series will do
+    start = find_labelled(layout, omega_from_um(reference), mode, ladder[:4], order=1)
     build = _Build(layout, _solved_band(layout, band), start, ladder, progress)
     build.run()
     return build.curve(section, mode, reference, band, started)

@@ -185,7 +185,8 @@ def _solve_singular(
             return z, residual
         stalled = stalled + 1 if residual > 0.5 * best else 0
         best = min(best, residual)
-        if stalled >= 3:
+        # below the limit nothing is won by more passes: what is left is rounding
+        if stalled >= (1 if best < STALL_LIMIT else 3):
             break
     if best > STALL_LIMIT:
         raise NotConverged(

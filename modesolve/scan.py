@@ -10,7 +10,7 @@ from materials.common import inputs
 from materials.common.constants import um_from_omega
 from materials.common.errors import NoGuidedMode, NotConverged, OutOfRange, UnknownName
 from modesolve.layout import Layout
-from modesolve.refine import LADDER, Resolved, refine
+from modesolve.refine import LADDER, ORDER, Resolved, refine
 from modesolve.seeds import Seed, cutoff_index, find_seeds, near_cutoff, overlap
 
 __all__ = [
@@ -60,10 +60,12 @@ def resolve_modes(
     count: int,
     ladder: tuple[int, ...] = LADDER,
     seeds: list[Seed] | None = None,
+    order: int = ORDER,
 ) -> ModeScan:
     """The ``count`` highest guided modes of a layout.
 
-    ``seeds`` are the candidates where they are known already.
+    ``seeds`` are the candidates where they are known already, ``order`` that of the
+    frequency series.
 
     Candidates of a coarse grid are climbed one by one. One that turns out not to be
     guided is dropped with a note, one that does not converge is left out with a note but
@@ -77,7 +79,7 @@ def resolve_modes(
         if len(modes) >= count and seed.n_eff < _last(modes, count) - ORDER_SLACK:
             break
         try:
-            found = refine(layout, omega, seed, ladder)
+            found = refine(layout, omega, seed, ladder, order)
         except NoGuidedMode as exc:
             notes.append(str(exc))
         except NotConverged as exc:
@@ -172,7 +174,11 @@ def check_core(layout: Layout, omega: float) -> None:
 
 
 def find_labelled(
-    layout: Layout, omega: float, label: str, ladder: tuple[int, ...] = LADDER
+    layout: Layout,
+    omega: float,
+    label: str,
+    ladder: tuple[int, ...] = LADDER,
+    order: int = ORDER,
 ) -> Resolved:
     """The mode that carries ``label`` at ``omega``.
 
@@ -191,7 +197,7 @@ def find_labelled(
         seeds = find_seeds(layout, omega, wanted, cutoff_index(layout, omega))
         coarse = label_modes([seed.te_fraction for seed in seeds])
         count = coarse.index(label) + 1 if label in coarse else len(seeds) + 1
-        scan = resolve_modes(layout, omega, count, ladder, seeds)
+        scan = resolve_modes(layout, omega, count, ladder, seeds, order)
         labels = list(scan.labels)
         if label in labels:
             return scan.modes[labels.index(label)]
