@@ -220,8 +220,11 @@ def _table_of(key: str) -> tuple[str, float | None]:
             raise OutOfRange(f"fraction {fraction:g} of {stem}: give one from {low:g} to {high:g}")
         return stem, fraction
     near = _nearest(key)
-    hint = f"nearest: {', '.join(near)}" if near else "materials.catalogue() lists the keys"
-    raise UnknownName(f"no medium {key!r} in the catalogue; {hint}")
+    hint = f"nearest: {', '.join(near)}; " if near else ""
+    raise UnknownName(
+        f"no medium {key!r} in the catalogue; {hint}materials.catalogue(), or on the command "
+        'line "idlermap materials list", shows all'
+    )
 
 
 def _nearest(key: str) -> list[str]:

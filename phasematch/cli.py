@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import contextlib
+import os
 import signal
 import sys
 import traceback
@@ -9,7 +11,7 @@ from typing import Any
 
 import click
 
-from materials.common.errors import DesignFileError, IdlermapError, SolverError
+from materials.common.errors import DesignFileError, IdlermapError, SolverError, StorageError
 from materials.common.files import check_free
 from materials.common.results import package_version
 from phasematch.cli_export import export
@@ -28,7 +30,7 @@ from phasematch.cli_parts import (
     say,
     working,
 )
-from phasematch.exit_codes import FAULT, INTERRUPTED, exit_code, help_text
+from phasematch.exit_codes import FAULT, GOOD, INTERRUPTED, STORAGE, exit_code, help_text
 
 COMPLETION = """
 \b
@@ -171,13 +173,16 @@ def ring(design: str, changes: tuple[str, ...], output: str | None, replace: boo
 
 
 @command.command()
-@click.argument("file", type=click.Path(dir_okay=False))
+@click.argument("file", type=click.Path())
 @replace_option()
 def new(file: str, replace: bool) -> None:
-    """Write a commented design to start from."""
+    """Write a commented design to start from; "-" writes it to stdout."""
     from materials.common.files import write_text
     from phasematch.starter import starter_text
 
+    if file == "-":
+        click.echo(starter_text(), nl=False)
+        return
     check_free(file, replace=replace)
     write_text(file, starter_text())
     say(f"wrote {file}")
@@ -186,18 +191,23 @@ def new(file: str, replace: bool) -> None:
 @command.command(short_help="Check design files without running them.")
 @click.argument("design", type=DESIGN, nargs=-1, required=True)
 @click.option("--resolved", is_flag=True, help="Print the design with every default filled in.")
-def check(design: tuple[str, ...], resolved: bool) -> None:
-    """Check design files without running them; every problem is listed."""
+def check(design: tuple[str, ...], resolved: bool) -> int:
+    """Check design files without running them; every problem of every file is listed."""
     problems: list[str] = []
+    code = GOOD
     for path in design:
         try:
             checked = read(path, ())
         except DesignFileError as exc:
             problems += exc.args[0]
+        except StorageError as exc:
+            say(str(exc))
+            code = STORAGE
         else:
             click.echo(checked.to_toml() if resolved else f"{path}: good", nl=not resolved)
     if problems:
         raise DesignFileError(tuple(problems))
+    return code
 
 
 command.add_command(export)
@@ -209,14 +219,15 @@ command.add_command(materials_group)
 
 def main(arguments: list[str] | None = None) -> None:
     """Entry point of the command: run it and turn errors into lines and exit codes."""
-    signal.signal(signal.SIGTERM, _stop)
     try:
+        signal.signal(signal.SIGTERM, _stop)
+        signal.signal(signal.SIGINT, signal.default_int_handler)
         code = command.main(args=arguments, prog_name="idlermap", standalone_mode=False)
-    except click.Abort:
+    except (click.Abort, KeyboardInterrupt):
         say("interrupted; nothing was left half written")
         sys.exit(INTERRUPTED)
     except click.ClickException as exc:
-        exc.show()
+        _say_usage(exc)
         sys.exit(exc.exit_code)
     except DesignFileError as exc:
         for line in exc.args[0]:
@@ -227,11 +238,37 @@ def main(arguments: list[str] | None = None) -> None:
         if isinstance(exc, SolverError):
             say("please report this, with the design file and the line above")
         sys.exit(exit_code(exc))
+    except SystemExit as exc:  # how click ends when the reader of stdout has gone away
+        if not isinstance(exc.__context__, BrokenPipeError):
+            raise
+        sys.exit(STORAGE)
+    except OSError as exc:  # those of files are `StorageError`: this is stdout's
+        _stdout_failed(exc)
+        sys.exit(STORAGE)
     except Exception:
         traceback.print_exc()
         say("this is a bug of Idlermap's own; please report it with the lines above")
         sys.exit(FAULT)
     sys.exit(code if isinstance(code, int) else 0)
+
+
+def _say_usage(error: click.ClickException) -> None:
+    """One line on wrong usage; a command without arguments shows its help."""
+    if type(error).__name__ == "NoArgsIsHelpError":
+        error.show()
+        return
+    context = getattr(error, "ctx", None)
+    verb = "idlermap" if context is None else context.command_path
+    say(f'{" ".join(error.format_message().split())} See "{verb} --help".')
+
+
+def _stdout_failed(error: OSError) -> None:
+    """Say that stdout could not be written; a reader that has gone away needs no word."""
+    if not isinstance(error, BrokenPipeError):
+        say(f"cannot write to stdout: {error.strerror or error}; check that the disk has room")
+    # what is left in the buffer goes nowhere, or Python would complain at its exit
+    with contextlib.suppress(OSError, ValueError):
+        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
 
 
 def _stop(number: int, frame: Any) -> None:

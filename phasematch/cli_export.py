@@ -7,6 +7,8 @@ from typing import TYPE_CHECKING
 import click
 import numpy as np
 
+from materials.common.errors import NoGuidedMode, OutOfRange
+from modesolve.cross_section import LARGEST_UM, SMALLEST_UM
 from phasematch.cli_parts import (
     check_file,
     design_argument,
@@ -110,12 +112,19 @@ def taper(
 ) -> int:
     """n_eff, n_g and area against core width.
 
-    Widths where the mode is missing are NaN with the reason; the exit code is then 3.
+    Widths where the mode is missing are NaN with the reason; the exit code is then 3, or 4
+    when it is missing at all of them.
     """
     from modesolve.tables import taper_table
     from phasematch.study import section_of
 
     check_file(output, replace, design)
+    for option, width in (("--from-um", from_um), ("--to-um", to_um)):
+        if not SMALLEST_UM <= width <= LARGEST_UM:
+            raise OutOfRange(
+                f"{option} = {width:g} um: allowed core widths are {SMALLEST_UM:g} to "
+                f"{LARGEST_UM:g} um"
+            )
     checked = read(design, changes)
     mode = checked.tables.mode
     with working() as tell:
@@ -126,4 +135,6 @@ def taper(
             mode.label,
             progress=tell,
         )
+    if result.failed == points:
+        raise NoGuidedMode(f"no width has a value; at {from_um:g} um: {result.reason[0]}")
     return _hand_over(result, output)

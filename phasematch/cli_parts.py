@@ -21,9 +21,16 @@ if TYPE_CHECKING:
     from phasematch.design_file import Design
 
 
+class _Stdout(Console):
+    """A console that leaves a reader gone away to the entry point, like any other failure."""
+
+    def on_broken_pipe(self) -> None:
+        raise BrokenPipeError
+
+
 def out() -> Console:
     """Console of stdout: no colour where NO_COLOR is set or stdout is no terminal."""
-    return Console(highlight=False, soft_wrap=False)
+    return _Stdout(highlight=False, soft_wrap=False)
 
 
 def say(message: str) -> None:
@@ -91,7 +98,7 @@ def save(result: Result, path: str | None) -> None:
     say(f"wrote {path}")
 
 
-DESIGN = click.Path(exists=True, dir_okay=False)
+DESIGN = click.Path()  # one that cannot be read is an error of storage, not of usage
 
 
 def design_argument(function: Any) -> Any:

@@ -62,7 +62,7 @@ def _unknown_media(values: Values) -> Iterator[str]:
         try:
             materials.load(key)
         except InputError as exc:
-            yield f'{path} = "{key}": {exc}; "idlermap materials list" shows all'
+            yield f'{path} = "{key}": {exc}'
 
 
 def _band_order(values: Values) -> Iterator[str]:

@@ -38,7 +38,11 @@ EXIT_CODES = (
     ExitCode(USAGE, "wrong usage, or problems in the design file (one line each)", (InputError,)),
     ExitCode(FAILED_POINTS, "finished, but points inside the solved band have no value"),
     ExitCode(RANGE, "an input out of range, or no guided mode", (OutOfRange, NoGuidedMode)),
-    ExitCode(STORAGE, "a file or folder could not be read or written", (StorageError,)),
+    ExitCode(
+        STORAGE,
+        "a design, file, folder or stdout could not be read or written",
+        (StorageError,),
+    ),
     ExitCode(INTERRUPTED, "interrupted, or told to terminate", (KeyboardInterrupt,)),
 )
 

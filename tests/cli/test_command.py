@@ -61,7 +61,7 @@ def here(tmp_path, monkeypatch):
 @pytest.fixture
 def idlermap(here, capsys):
     """Run the command in this process; gives exit code, stdout, stderr."""
-    before = signal.getsignal(signal.SIGTERM)
+    before = {number: signal.getsignal(number) for number in (signal.SIGTERM, signal.SIGINT)}
 
     def run(*arguments):
         with pytest.raises(SystemExit) as stopped:
@@ -70,7 +70,8 @@ def idlermap(here, capsys):
         return stopped.value.code, out, err
 
     yield run
-    signal.signal(signal.SIGTERM, before)
+    for number, handler in before.items():
+        signal.signal(number, handler)
 
 
 # ---------------------------------------------------------------- verbs
@@ -237,6 +238,7 @@ def test_new_check_and_resolved(idlermap):
     assert idlermap("check", "start.toml") == (0, "start.toml: good\n", "")
     code, _, err = idlermap("new", "start.toml")
     assert code == cli_codes().STORAGE and "start.toml exists" in err
+    assert idlermap("new", "-") == (0, Path("start.toml").read_text(), "")
     code, out, _ = idlermap("check", "--resolved", "start.toml")
     assert code == 0 and 'label = "TE0"' in out
 
@@ -325,8 +327,35 @@ def test_codes_are_the_documented_numbers():
 @pytest.mark.parametrize(
     ("arguments", "code", "words"),
     [
-        (["modes", "none.toml"], 2, "does not exist"),
-        (["modes"], 2, "Missing argument"),
+        (["modes", "none.toml"], 5, "cannot read none.toml: No such file"),
+        (["modes", ""], 5, "give the path of a design file"),
+        (["modes"], 2, "Missing argument 'DESIGN'. See \"idlermap modes --help\"."),
+        (["modes", "design.toml", "-o", ""], 2, "the name is empty"),
+        (["modes", "design.toml", "--count", "x"], 2, "'x' is not a valid integer"),
+        (["modes", "design.toml", "--outputs", "x"], 2, "No such option"),
+        (["materials", "show", "nope"], 2, "idlermap materials list"),
+        (
+            ["export", "taper", "design.toml", "--from-um", "1", "--to-um", "200"],
+            4,
+            "--to-um = 200 um: allowed core widths are 0.005 to 100 um",
+        ),
+        (
+            [
+                "export",
+                "taper",
+                "design.toml",
+                "--from-um",
+                "0.02",
+                "--to-um",
+                "0.03",
+                "--points",
+                "2",
+                "--set",
+                'mode.label="TE4"',
+            ],
+            4,
+            "no width has a value; at 0.02 um: ",
+        ),
         (["nonsense"], 2, "No such command"),
         (["modes", "design.toml", "-o", "modes.txt"], 2, "must end in .csv or .h5"),
         (["modes", "design.toml", "--set", "width=2"], 2, "write table.key=value"),
@@ -343,7 +372,8 @@ def test_errors_are_lines_on_stderr_with_their_code(idlermap, here, arguments, c
     found, out, err = idlermap(*arguments)
     assert (found, out) == (code, "")
     assert words in err
-    assert "Traceback" not in err
+    assert err.splitlines()[-1].startswith("idlermap: ")
+    assert not any(word in err for word in ("Traceback", "Usage:", "Try "))
     assert sorted(p.name for p in here.iterdir()) == ["design.toml"]
 
 
@@ -358,8 +388,11 @@ def test_a_bad_design_is_listed_line_by_line(idlermap):
         "bad.toml: cross_section.width_um = -1.6: must be a number from 0.005 to 100 um",
         "bad.toml: ring.pair = 5: no such key in [ring]; did you mean pairs?",
     ]
-    code, _, again = idlermap("check", "bad.toml", "design.toml")
-    assert (code, again) == (2, err)
+    code, out, again = idlermap("check", "bad.toml", "none.toml", "design.toml")
+    assert (code, out) == (2, "design.toml: good\n")
+    missing, *rest = again.splitlines()
+    assert rest == lines and missing.startswith("idlermap: cannot read none.toml")
+    assert idlermap("check", "none.toml", "design.toml")[:2] == (5, "design.toml: good\n")
 
 
 def test_missing_table_for_a_verb(idlermap):
@@ -411,6 +444,59 @@ def test_missing_points_give_one_code_from_every_verb(idlermap, here, verb, chan
     found, _, err = idlermap(verb, "design.toml", *folder, *sets)
     assert found == code, err
     assert ("points without a value" in err) == (code == 3)
+
+
+@pytest.mark.parametrize(
+    "arguments", [("materials", "list"), ("check", "--resolved", "design.toml"), ("--help",)]
+)
+def test_a_full_disk_or_a_reader_gone_away_is_no_bug(here, arguments):
+    """Code 5; one line where the disk is full, none where nobody reads."""
+    root = Path(phasematch.__file__).parents[1]
+    command = [sys.executable, "-c", "from phasematch.cli import main; main()", *arguments]
+    about = {"cwd": here, "env": {**os.environ, "PYTHONPATH": str(root)}}
+    with open("/dev/full", "w") as full:
+        done = subprocess.run(
+            command, stdout=full, stderr=subprocess.PIPE, text=True, check=False, **about
+        )
+    line = "idlermap: cannot write to stdout: No space left on device; check that the disk has room"
+    assert (done.returncode, done.stderr) == (5, f"{line}\n")
+    read, write = os.pipe()
+    os.close(read)
+    done = subprocess.run(
+        command, stdout=write, stderr=subprocess.PIPE, text=True, check=False, **about
+    )
+    os.close(write)
+    assert (done.returncode, done.stderr) == (5, "")
+
+
+@pytest.mark.parametrize("number", [signal.SIGINT, signal.SIGTERM])
+def test_interrupted_while_it_loads(here, number):
+    """A signal in the middle of the imports ends it with 130 and not a word."""
+    code = f"""
+import os, sys
+class Interrupting:
+    def find_spec(self, name, *about):
+        if name == "scipy":
+            os.kill(os.getpid(), {int(number)})
+sys.meta_path.insert(0, Interrupting())
+from idlermap.__main__ import main
+main()
+"""
+    root = Path(phasematch.__file__).parents[1]
+    done = subprocess.run(
+        [sys.executable, "-c", code, "--version"], capture_output=True, text=True, check=False,
+        env={**os.environ, "PYTHONPATH": str(root)},
+    )  # fmt: skip
+    assert (done.returncode, done.stdout, done.stderr) == (130, "", "")
+
+
+def test_entry_point_and_module_are_the_command(here):
+    root = Path(phasematch.__file__).parents[1]
+    done = subprocess.run(
+        [sys.executable, "-m", "idlermap", "--version"], capture_output=True, text=True,
+        check=False, env={**os.environ, "PYTHONPATH": str(root)}, cwd=here,
+    )  # fmt: skip
+    assert done.returncode == 0 and done.stdout.startswith("idlermap, version ")
 
 
 def test_a_bug_says_so(idlermap, monkeypatch):

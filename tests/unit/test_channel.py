@@ -303,7 +303,7 @@ def test_media_that_absorb_two_photons_are_noted_with_every_power():
         ring.spontaneous(1.55, 1e-4, 2),
         ring.stimulated(1.55, 1e-4, 1e-6, 2),
     ):
-        assert result.notes[-2:] == (said, LASER_CAUTION)
+        assert {said, LASER_CAUTION} <= set(result.notes)
     assert said not in channel.conversion_band(1.55, 0.0).notes
     glass = curve(section=SimpleNamespace(media=wire.media[1:]))
     assert not any("two-photon" in n for n in Channel(glass, length_mm=10).pair_flux(1.55, 1).notes)
