@@ -239,9 +239,8 @@ def main(arguments: list[str] | None = None) -> None:
             say("please report this, with the design file and the line above")
         sys.exit(exit_code(exc))
     except SystemExit as exc:  # how click ends when the reader of stdout has gone away
-        if not isinstance(exc.__context__, BrokenPipeError):
-            raise
-        sys.exit(STORAGE)
+        gone = "PacifyFlushWrapper" in type(sys.stdout).__name__
+        sys.exit(STORAGE if gone else exc.code)
     except OSError as exc:  # those of files are `StorageError`: this is stdout's
         _stdout_failed(exc)
         sys.exit(STORAGE)
