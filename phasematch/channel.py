@@ -32,7 +32,7 @@ from phasematch.weak_mixing import weak_photons_m2
 
 __all__ = ["Channel"]
 
-_WEAK = 0.1  # gamma P L above which the weak-pump forms get a note
+_WEAK = 0.02  # gamma P L above which the weak-pump forms get a note
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -340,8 +340,8 @@ class Channel:
         phase *= float(np.max(gamma, initial=0.0, where=np.isfinite(gamma)))
         if self.loss_db_per_cm and phase > _WEAK:
             notes.append(
-                f"gamma P L_eff reaches {phase:.2g}: the forms with loss hold for a weak pump, "
-                "well below 1; take the numbers as estimates"
+                f"gamma P L_eff reaches {phase:.2g}: the forms with loss hold for a weak pump and "
+                "leave out the pump's own phase, an error of about that size"
             )
         return (*notes, *power_notes(self.curve))
 

@@ -14,8 +14,11 @@ from typing import Any
 
 import numpy as np
 
-from materials.common.errors import NotConverged, SolverError
+from materials.common.errors import NotConverged, OutOfRange, SolverError
 from phasematch.curve_protocol import Curve
+
+#: Most resonances that are found at once.
+MOST_RESONANCES = 200_000
 
 _GUESS_POINTS = 129
 _MOST_PASSES = 30
@@ -65,6 +68,22 @@ def order_range(curve: Curve, radius_um: float) -> tuple[int, int]:
     """
     _, turns = _turns(curve, radius_um)
     return math.ceil(turns[0]), math.floor(turns[-1])
+
+
+def check_number(curve: Curve, radius_um: float, number: int) -> None:
+    """Refuse to find more than `MOST_RESONANCES` at once.
+
+    Raises
+    ------
+    OutOfRange
+    """
+    if number > MOST_RESONANCES:
+        short, long = curve.band_um
+        raise OutOfRange(
+            f"a ring of radius {radius_um:g} um has too many resonances, {number} between "
+            f"{short:.6g} and {long:.6g} um; at most {MOST_RESONANCES} are found at once: narrow "
+            "the band, or take a smaller ring"
+        )
 
 
 def _turns(curve: Curve, radius_um: float) -> tuple[np.ndarray, np.ndarray]:

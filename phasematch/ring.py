@@ -28,7 +28,7 @@ from phasematch import cavity, ring_power
 from phasematch.bend_note import bend_note
 from phasematch.curve_protocol import Curve, error_bar, inside, snap, values_with_bars
 from phasematch.reasons import outside_or_good
-from phasematch.resonances import Lines, find_lines, order_range, ring_dispersion
+from phasematch.resonances import Lines, check_number, find_lines, order_range, ring_dispersion
 from phasematch.ring_results import (
     DetuningMap,
     IntegratedDispersion,
@@ -40,6 +40,8 @@ from phasematch.ring_results import (
 )
 
 __all__ = ["Ring"]
+
+_MAP_POINTS = 1_000_000  # points of a detuning map, at most
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -139,9 +141,9 @@ class Ring:
             When the pump lies outside the band.
         """
         omega = self._in_band("pump_um", pump_um)
-        orders = self._orders(None, None)
+        low, high = self._order_range(None, None)
         nearest = round(self.radius_um * float(self.curve.beta_rad_per_um(omega)))
-        return int(min(max(nearest, orders[0]), orders[-1]))
+        return min(max(nearest, low), high)
 
     def resonances(self, short_um: float | None = None, long_um: float | None = None) -> Resonances:
         """All resonances between two wavelengths (by default in the solved band).
@@ -295,12 +297,13 @@ class Ring:
         Returns
         -------
         DetuningMap
-            Arrays of shape (pumps, count).
+            Arrays of shape (pumps, count). Beyond a million points it holds every second,
+            third ... pump resonance, and a note says so.
 
         Raises
         ------
         OutOfRange
-            When the pump band lies outside the solved one.
+            When the pump band lies outside the solved one, or holds too many resonances.
         """
         count = inputs.whole("count", count, most=100_000)
         ends = (
@@ -309,6 +312,9 @@ class Ring:
             else inputs.interval("pump_band_um", pump_band_um, "um")
         )
         pumps, mu = self._orders(*ends), np.arange(1, count + 1)
+        step = math.ceil(len(pumps) * count / _MAP_POINTS)
+        thinned = (f"the map holds one pump resonance in {step}",) if step > 1 else ()
+        pumps = pumps[::step]
         around = np.arange(pumps[0] - count, pumps[-1] + count + 1)
         centre = (pumps - around[0])[:, None]
 
@@ -336,7 +342,7 @@ class Ring:
             aligned=frozen_array(np.abs(miss) <= values["linewidth_mhz"]),
             reason=frozen_array(outside_or_good(np.isfinite(miss))),
             error=ErrorBars({**bars, **pump_bars}),
-            **self.about(),
+            **{**self.about(), "notes": (*self.notes, *thinned)},
         )
 
     # ------------------------------------------------------------ with light in it
@@ -379,7 +385,7 @@ class Ring:
         signal_detuning_mhz: float = 0.0,
         kerr_shift: bool = True,
     ) -> StimulatedIdler:
-        """Idler power with a seed on each signal resonance in turn; low gain.
+        """Idler power with a seed on each signal resonance in turn, up to threshold.
 
         Parameters
         ----------
@@ -393,7 +399,8 @@ class Ring:
         Returns
         -------
         StimulatedIdler
-            (omega_i/omega_s)(gamma L P_p)^2 P_s B_p^2 B_s B_i; NaN as for `spontaneous`.
+            (omega_i/omega_s) gamma_s gamma_i (L P_p)^2 P_s B_p^2 B_s B_i times
+            `cavity.seed_gain`, pump and seed undepleted; NaN as for `spontaneous`.
 
         Raises
         ------
@@ -422,7 +429,13 @@ class Ring:
         return float(snap(self.curve, omega))
 
     def _orders(self, short_um: float | None, long_um: float | None) -> np.ndarray:
-        """Orders of all resonances between two wavelengths."""
+        """Orders of all resonances between two wavelengths, if they are not too many."""
+        low, high = self._order_range(short_um, long_um)
+        check_number(self.curve, self.radius_um, high - low + 1)
+        return np.arange(low, high + 1)
+
+    def _order_range(self, short_um: float | None, long_um: float | None) -> tuple[int, int]:
+        """Lowest and highest order between two wavelengths."""
         low, high = order_range(self.curve, self.radius_um)
         if long_um is not None:
             omega = self._in_band("long end", long_um)
@@ -436,7 +449,7 @@ class Ring:
                 f"no resonance of the ring of radius {self.radius_um:g} um lies between "
                 f"{short_um or short:g} and {long_um or long:g} um; widen the band"
             )
-        return np.arange(low, high + 1)
+        return low, high
 
     def _pump(self, order: int) -> tuple[dict[str, Any], dict[str, Any]]:
         """Wavelength in um and frequency in THz of a resonance, and their error bars."""

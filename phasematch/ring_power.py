@@ -1,7 +1,8 @@
 """Light in a ring: spontaneous pairs and stimulated idlers, up to threshold and no further.
 
-The laser sits on the pump's hot resonance. The pump line is then shifted by -gN and all
-others by -2gN, so the hot misalignment is delta = delta_mu - 2gN.
+The laser sits on the pump's hot resonance. The pump line is then shifted by -gN and another
+by -2gN f, f = omega v_g over that of the pump (`cavity.line_share`), so the hot misalignment
+is delta = delta_mu - 2gN (f_s + f_i - 1).
 """
 
 from __future__ import annotations
@@ -23,13 +24,13 @@ from phasematch import cavity
 from phasematch.caution import power_notes
 from phasematch.curve_protocol import Curve, gamma_or_nan, values_with_bars
 from phasematch.reasons import GAMMA_UNKNOWN, OUTSIDE_BAND
-from phasematch.resonances import find_lines, order_range
+from phasematch.resonances import check_number, find_lines, order_range
 from phasematch.ring_results import PairRates, StimulatedIdler
 
 if TYPE_CHECKING:
     from phasematch.ring import Ring
 
-_HIGH = 0.1  # x above which low-gain forms get a note
+_HIGH = 0.02  # x above which low-gain forms get a note
 
 
 class Hot(NamedTuple):
@@ -39,8 +40,10 @@ class Hot(NamedTuple):
     gamma: float
     n_group: float
     photons: float
-    gain: float
+    shift: float  # gN, by which the pump's line moves
     oscillating: int  # the first pair of the whole band at or above threshold, 0 for none
+    least_w: float  # the least threshold of the band's pairs, NaN where none oscillates
+    least_mu: int  # the pair it belongs to
     signal: np.ndarray
     idler: np.ndarray
     width_s: np.ndarray
@@ -48,6 +51,8 @@ class Hot(NamedTuple):
     cold: np.ndarray
     delta: np.ndarray
     x: np.ndarray
+    gain: np.ndarray  # G, at which signal and idler couple
+    threshold_w: np.ndarray
 
 
 def heat_up(ring: Ring, order: int, pump_w: float, count: int, kerr_shift: bool) -> Hot:
@@ -56,22 +61,36 @@ def heat_up(ring: Ring, order: int, pump_w: float, count: int, kerr_shift: bool)
     low, high = order_range(curve, ring.radius_um)
     # threshold is looked for among all pairs of the band, not only those listed
     most = max(count, min(order - low, high - order))
+    check_number(curve, ring.radius_um, 2 * most + 1)
     mu = np.arange(1, most + 1)
     lines = find_lines(curve, ring.radius_um, np.arange(order - most, order + most + 1))
     omega = lines.omega_rad_per_ps
-    pump = float(omega[most])
+    pump, signal, idler = float(omega[most]), omega[most + mu], omega[most - mu]
     gamma = float(gamma_or_nan(curve, um_from_omega(pump)))
-    n_group = C_UM_PER_PS * float(curve.beta_rad_per_um(pump, 1))
-    photons = cavity.photons_inside(pump_w, pump, pump / ring.q_loaded, pump / ring.q_coupling)
-    gain = photons * cavity.kerr_shift_per_photon(gamma, pump, n_group, ring.length_um)
-    signal, idler = omega[most + mu], omega[most - mu]
+    n_group = _n_group(curve, pump)
+    share_s, share_i = (
+        cavity.line_share(line, _n_group(curve, line), pump, n_group) for line in (signal, idler)
+    )
+    width_p, coupling_p = pump / ring.q_loaded, pump / ring.q_coupling
+    photons = cavity.photons_inside(pump_w, pump, width_p, coupling_p)
+    per_photon = cavity.kerr_shift_per_photon(gamma, pump, n_group, ring.length_um)
+    shift, kerr = photons * per_photon, float(kerr_shift) * (share_s + share_i - 1.0)
+    gain = shift * np.sqrt(share_s * share_i)
     width_s, width_i = signal / ring.q_loaded, idler / ring.q_loaded
     cold = lines.misaligned(most, mu)
-    delta = cold - 2.0 * gain if kerr_shift else cold
+    delta = cold - 2.0 * shift * kerr if kerr_shift else cold
     x = cavity.threshold_fraction(gain, width_s, width_i, delta)
-    arrays = (part[:count] for part in (signal, idler, width_s, width_i, cold, delta, x))
+    at = cavity.threshold_gain(width_s, width_i, cold, coupling=share_s * share_i, shift=kerr)
+    threshold = cavity.pump_for_photons(at / per_photon, pump, width_p, coupling_p)
+    least = int(np.argmin(np.where(np.isnan(threshold), np.inf, threshold)))
     first = int(np.argmax(x >= 1.0)) + 1 if np.any(x >= 1.0) else 0
-    return Hot(pump, gamma, n_group, photons, gain, first, *arrays)
+    arrays = (signal, idler, width_s, width_i, cold, delta, x, gain, threshold)
+    about = (shift, first, float(threshold[least]), least + 1)
+    return Hot(pump, gamma, n_group, photons, *about, *(part[:count] for part in arrays))
+
+
+def _n_group(curve: Curve, omega: Any) -> Any:
+    return C_UM_PER_PS * curve.beta_rad_per_um(omega, 1)
 
 
 #: What `_resonances` gives.
@@ -93,14 +112,8 @@ def _rates(ring: Ring, hot: Hot) -> np.ndarray:
     weak = cavity.pair_rate_inside(hot.gain, hot.width_s, hot.width_i, hot.delta)
     made = PER_PS_TO_PER_S * below * weak / np.where(hot.x < 1.0, 1.0 - hot.x, np.nan)
     escape = ring.escape_fraction
-    photons = cavity.threshold_gain(hot.width_s, hot.width_i, hot.cold)
-    photons = photons / cavity.kerr_shift_per_photon(
-        hot.gamma, hot.pump, hot.n_group, ring.length_um
-    )
-    threshold = cavity.pump_for_photons(
-        photons, hot.pump, hot.pump / ring.q_loaded, hot.pump / ring.q_coupling
-    )
-    return np.stack([made, escape * made, escape * made, escape**2 * made, hot.x, threshold])
+    singles = escape * made
+    return np.stack([made, singles, singles, escape**2 * made, hot.x, hot.threshold_w])
 
 
 def _reasons(hot: Hot) -> np.ndarray:
@@ -122,13 +135,18 @@ def _reasons(hot: Hot) -> np.ndarray:
 
 
 def _notes(ring: Ring, hot: Hot, low_gain: str) -> tuple[str, ...]:
+    """``low_gain`` names what holds at low gain only, "" if nothing does."""
     notes = list(ring.notes)
     top = np.nanmax(hot.x, initial=0.0)
     if hot.oscillating:
-        notes.append("at or above threshold: no rates are given, the pump is no longer what it was")
-    elif top > _HIGH:
+        notes.append(
+            f"at or above threshold, which pair {hot.least_mu} reaches first at "
+            f"{hot.least_w:.4g} W: no rates are given, the pump is no longer what it was"
+        )
+    elif low_gain and top > _HIGH:
         notes.append(f"x reaches {top:.2g} of the threshold's 1: {low_gain} hold at low gain")
-    return (*notes, *power_notes(ring.curve))  # thresholds are powers, also where the pump is off
+    # thresholds are powers, also where the pump is off
+    return (*notes, *power_notes(ring.curve))
 
 
 def spontaneous(
@@ -148,7 +166,7 @@ def spontaneous(
         other = replace(ring, curve=curve)
         now = heat_up(other, order, pump_w, count, kerr_shift)
         pump_um = um_from_omega(now.pump)
-        shift = RAD_PER_PS_TO_MHZ * now.gain
+        shift = RAD_PER_PS_TO_MHZ * now.shift
         return np.array([pump_um, now.photons, other.build_up(pump_um), shift])
 
     hot = heat_up(ring, order, pump_w, count, kerr_shift)
@@ -228,7 +246,7 @@ def stimulated(
         signal_w=signal_w,
         signal_detuning_mhz=seed_mhz,
         error=ErrorBars({**bars, **pump_bars}),
-        **_about(ring, hot, pump_um, kerr_shift, "idler powers"),
+        **_about(ring, hot, pump_um, kerr_shift, ""),
     )
 
 
@@ -238,18 +256,17 @@ def _idler_w(ring: Ring, hot: Hot, pump_w: float, signal_w: float, seed: float) 
         return np.full(hot.x.shape, np.nan)
 
     def built(omega: Any, detuning: Any) -> Any:
-        n_group = C_UM_PER_PS * np.asarray(ring.curve.beta_rad_per_um(omega, 1))
         width, coupling = omega / ring.q_loaded, omega / ring.q_coupling
+        n_group = np.asarray(_n_group(ring.curve, omega))
         return cavity.build_up(n_group, ring.length_um, width, coupling, detuning)
 
-    build_ups = (
-        built(hot.pump, 0.0),
-        built(hot.signal, seed),
-        built(hot.idler, -(hot.delta + seed)),
+    detuning = -(hot.delta + seed)
+    build_ups = built(hot.pump, 0.0), built(hot.signal, seed), built(hot.idler, detuning)
+    gamma = hot.gamma * np.sqrt(hot.signal * hot.idler) / hot.pump
+    weak = cavity.stimulated_idler_w(
+        gamma, ring.length_um, pump_w, signal_w, build_ups, hot.idler / hot.signal
     )
-    return cavity.stimulated_idler_w(
-        hot.gamma, ring.length_um, pump_w, signal_w, build_ups, hot.idler / hot.signal
-    )
+    return weak * cavity.seed_gain(hot.gain, hot.width_s, hot.width_i, seed, detuning)
 
 
 def _about(ring: Ring, hot: Hot, pump_um: float, kerr_shift: bool, low_gain: str) -> dict[str, Any]:

@@ -214,7 +214,13 @@ def test_spontaneous_follows_the_hot_misalignment():
     table = ring.pairs(1.55, 20)
     np.testing.assert_allclose(rates.misalignment_mhz, table.misalignment_mhz, atol=1e-6)
     shift = rates.misalignment_mhz - rates.hot_misalignment_mhz
-    np.testing.assert_allclose(shift, 2 * rates.kerr_shift_mhz, rtol=1e-9)
+    # each line shifts by its own omega v_g; the mean of the two is the pump's to second order
+    omega_s, omega_i = (TWO_PI * f for f in (table.signal_thz, table.idler_thz))
+    speeds = [1.0 / ring.curve.beta_rad_per_um(w, 1) for w in (omega_s, omega_i)]
+    at_pump = TWO_PI * table.pump_thz / ring.curve.beta_rad_per_um(TWO_PI * table.pump_thz, 1)
+    twice = (omega_s * speeds[0] + omega_i * speeds[1]) / at_pump - 1.0
+    np.testing.assert_allclose(shift, 2 * rates.kerr_shift_mhz * twice, rtol=1e-7)
+    assert np.all(np.abs(twice - 1.0) < 1e-3)
     assert rates.kerr_shift_mhz > 0.0
     omega = TWO_PI * table.pump_thz
     stored = rates.build_up * 1e-3 * ring.length_um * 2.1 / C_UM_PER_PS
@@ -246,6 +252,8 @@ def test_rates_stop_at_threshold_with_the_reason():
     assert np.isnan(above.coincidences_per_s).all()
     assert "threshold" in above.reason[first - 1]
     assert all(above.reason)
+    said = f"pair {first} reaches first at {power:.4g} W"
+    assert any(said in note for note in above.notes)
     assert np.isnan(ring.stimulated(1.55, power * 1.01, 1e-9, 60).idler_w).all()
     # a pair that was beyond the ones listed stops the others too
     few = ring.spontaneous(1.55, power * (1 + 1e-6), first - 1)
@@ -271,14 +279,71 @@ def test_stimulated_idler_is_the_steady_state_of_the_amplitudes():
     d_i = -(hot.hot_misalignment_mhz * to + d_s)
     np.testing.assert_allclose(out.idler_detuning_mhz, d_i / to, rtol=1e-9)
     flux = signal / (HBAR_W_PS2 * ws)
-    photons_s = ws / 2e6 * flux / ((0.5 * ws / 1e6) ** 2 + d_s**2)
-    gain = hot.kerr_shift_mhz * to
-    photons_i = gain**2 * photons_s / ((0.5 * wi / 1e6) ** 2 + d_i**2)
-    want = HBAR_W_PS2 * wi * wi / 2e6 * photons_i
-    # n_g of signal and idler stand for that of the pump: 1e-3 at ten spacings
-    np.testing.assert_allclose(out.idler_w, want, rtol=2e-3)
+    pump_omega = TWO_PI * C_UM_PER_PS / out.pump_um
+    slow = ring.curve.beta_rad_per_um
+    speeds = slow(pump_omega, 1) ** 2 / (slow(ws, 1) * slow(wi, 1))
+    gain = hot.kerr_shift_mhz * to * np.sqrt(ws * wi / pump_omega**2 * speeds)
+    # amplitudes: D_s a_s = i G a_i* + S, D_i a_i = i G a_s*, solved as they stand
+    inverse_s, inverse_i = 0.5 * ws / 1e6 - 1j * d_s, 0.5 * wi / 1e6 - 1j * d_i
+    drive = np.sqrt(ws / 2e6 * flux)
+    a_s = drive / (inverse_s - gain**2 / np.conj(inverse_i))
+    a_i = 1j * gain * np.conj(a_s) / inverse_i
+    want = HBAR_W_PS2 * wi * wi / 2e6 * np.abs(a_i) ** 2
+    np.testing.assert_allclose(out.idler_w, want, rtol=1e-7)  # bars of MHz columns: 1e-9 of 1 GHz
     np.testing.assert_allclose(out.efficiency, out.idler_w / signal, rtol=1e-14)
     assert LASER_CAUTION in out.notes
+
+
+def test_seeded_idler_grows_without_limit_towards_threshold():
+    """Where the seed sits best the gain is 1/(1 - x)^2, and never more elsewhere."""
+    ws, wi, delta, gain = 1.0, 0.7, 0.4, 0.35
+    x = cavity.threshold_fraction(gain, ws, wi, delta)
+    best = -delta * ws / (ws + wi)
+    got = cavity.seed_gain(gain, ws, wi, best, -delta - best)
+    assert got == pytest.approx((1 - x) ** -2, rel=1e-13)
+    ring = nitride()
+    least = ring.spontaneous(1.55, 0.0, 60).threshold_w
+    mu = int(np.nanargmin(least))
+    strong = ring.stimulated(1.55, 0.9 * least[mu], 1e-9, 60)
+    hot = strong.hot_misalignment_mhz[mu]
+    tuned = ring.stimulated(1.55, 0.9 * least[mu], 1e-9, 60, signal_detuning_mhz=-0.5 * hot)
+    assert tuned.efficiency[mu] > strong.efficiency[mu]
+    assert not any("low gain" in note for note in tuned.notes)
+
+
+def test_threshold_without_the_kerr_shift_is_that_of_the_same_model():
+    """x = 1 at the threshold stated, for either sign of dispersion."""
+    for beta2 in (-50.0, 50.0):
+        ring = nitride(beta2=beta2)
+        for kerr in (False, True):
+            least = ring.spontaneous(1.55, 0.0, 8, kerr_shift=kerr).threshold_w
+            if kerr and beta2 > 0:
+                assert np.isnan(least).all()
+                continue
+            for mu in (1, 5, 8):
+                there = ring.spontaneous(1.55, least[mu - 1], 8, kerr_shift=kerr)
+                assert there.threshold_fraction[mu - 1] == pytest.approx(1.0, rel=1e-9)
+
+
+def test_too_many_resonances_are_refused_and_large_maps_thinned(monkeypatch):
+    huge = Ring(curve(half_band_thz=30.0), radius_um=1e6, q_intrinsic=1e6, q_coupling=1e6)
+    assert np.isfinite(huge.pairs(1.55, 5).misalignment_mhz).all()  # needs eleven of them
+    for work in (
+        huge.resonances,
+        huge.detuning_map,
+        lambda: huge.spontaneous(1.55, 1e-3, 5),
+        lambda: huge.stimulated(1.55, 1e-3, 1e-6, 5),
+    ):
+        with pytest.raises(OutOfRange, match=r"too many resonances, .* at most 200000"):
+            work()
+    monkeypatch.setattr("phasematch.ring._MAP_POINTS", 1000)
+    ring, full = nitride(), len(nitride().resonances().order)
+    thin = ring.detuning_map(None, 10)
+    step = math.ceil(full * 10 / 1000)
+    assert step > 1 and len(thin.pump_order) == math.ceil(full / step)
+    assert f"the map holds one pump resonance in {step}" in thin.notes
+    row = ring.pairs(thin.pump_um[3], 10)
+    np.testing.assert_allclose(row.misalignment_mhz, thin.misalignment_mhz[3], atol=1e-6)
 
 
 def test_unknown_gamma_gives_nan_and_says_so():
