@@ -57,8 +57,8 @@ def error_bar(functional: Callable[[Any], Any], best: Any, alternates: Iterable[
 
     Examples
     --------
-    >>> error_bar(lambda x: x**2, 3.0, [Alternate("a step", 0.5, 3.1)])
-    0.305
+    >>> error_bar(lambda x: x**2, 3.0, [Alternate("a step", 0.5, 3.5)])
+    1.625
     """
     value = np.asarray(functional(best), dtype=float)
     bar, variance = np.zeros(value.shape), np.zeros(value.shape)

@@ -52,6 +52,7 @@ def test_left_and_right_are_mirror_images():
     assert np.allclose(np.abs(a.e_x), np.abs(b.e_x[::-1]), atol=1e-6)
 
 
+@pytest.mark.slow
 def test_the_field_is_pushed_outwards():
     field = first(nitride(8.0)).fields()
     x = np.real(field.x_um)
@@ -81,7 +82,7 @@ def test_a_taller_ladder_stays_inside_the_bars():
         assert gap < mode.error[key] + fine.error[key], key
 
 
-@pytest.mark.parametrize("radius", [115.0, 6.0])
+@pytest.mark.parametrize("radius", [115.0, pytest.param(6.0, marks=pytest.mark.slow)])
 def test_group_index_equals_the_energy_integral(radius):
     """Exact on every grid, bent and leaking too: dA carries h, the power does not."""
     mode = first(nitride(radius))

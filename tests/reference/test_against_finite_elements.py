@@ -21,6 +21,15 @@ import modesolve
 OURS = "vector finite elements with scikit-fem, this repository's tests"
 CONVERGED = tomllib.loads(Path(__file__).with_name("channel_values.toml").read_text())
 
+#: One case of each kind; live solves are made of these, and --slow adds the rest.
+QUICK = [
+    "nitride-1600x800-in-silica-TE",
+    "nitride-1600x800-in-silica-TM",
+    "silicon-500x220-in-silica-TE",
+    "silicon-500x220-in-silica-TM",
+    "silicon-rib-air-above-TE",
+]
+
 # absolute tolerances of the ladder 3:4:5; beta2 in ps2/km
 TOLERANCE = {
     "nitride": {"n_eff": 1e-7, "n_group": 4e-7, "beta2_ps2_per_km": 2e-2},
@@ -84,16 +93,7 @@ def live(case: dict) -> GuidedMode:
 
 
 @pytest.mark.source(OURS, "solved by the test", "n_eff 2e-8 to 1e-7")
-@pytest.mark.parametrize(
-    "name",
-    [
-        "nitride-1600x800-in-silica-TE",
-        "nitride-1600x800-in-silica-TM",
-        "silicon-500x220-in-silica-TE",
-        "silicon-500x220-in-silica-TM",
-        "silicon-rib-air-above-TE",
-    ],
-)
+@pytest.mark.parametrize("name", QUICK)
 @pytest.mark.slow
 def test_live_solve(name):
     case = CONVERGED[name]
@@ -112,7 +112,13 @@ def test_live_solve(name):
 
 
 @pytest.mark.source(OURS, "channel_values.toml", "n_eff 3e-11 to 3e-9")
-@pytest.mark.parametrize("name", sorted(CONVERGED))
+@pytest.mark.parametrize(
+    "name",
+    [
+        pytest.param(name, marks=[] if name in QUICK else pytest.mark.slow)
+        for name in sorted(CONVERGED)
+    ],
+)
 def test_converged_values(name):
     case = CONVERGED[name]
     mode = ours(name)
