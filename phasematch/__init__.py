@@ -27,24 +27,50 @@ The rooms are in the order of the work::
     report, figures, exit_codes, cli*
                     the command
 
-Neither click nor Matplotlib is loaded by importing this package.
+Importing the package loads next to nothing; each public name loads its own room when it is
+first used, so that the command is ready for an interrupt at once. Neither click nor
+Matplotlib is loaded by any of them.
 """
 
+from importlib import import_module
+from typing import TYPE_CHECKING, Any
+
 import phasematch.guard  # noqa: F401 - first: it looks for hidden packages
-from phasematch.caution import LASER_CAUTION
-from phasematch.channel import Channel
-from phasematch.channel_results import ChannelMap, ConversionBand, PairFlux
-from phasematch.curve_protocol import Curve, error_bar
-from phasematch.ring import Ring
-from phasematch.ring_results import (
-    DetuningMap,
-    IntegratedDispersion,
-    PairRates,
-    PairTable,
-    Resonances,
-    RingDispersion,
-    StimulatedIdler,
-)
+
+if TYPE_CHECKING:
+    from phasematch.caution import LASER_CAUTION
+    from phasematch.channel import Channel
+    from phasematch.channel_results import ChannelMap, ConversionBand, PairFlux
+    from phasematch.curve_protocol import Curve, error_bar
+    from phasematch.ring import Ring
+    from phasematch.ring_results import (
+        DetuningMap,
+        IntegratedDispersion,
+        PairRates,
+        PairTable,
+        Resonances,
+        RingDispersion,
+        StimulatedIdler,
+    )
+
+#: Where each public name lives.
+_ROOMS = {
+    "caution": ("LASER_CAUTION",),
+    "channel": ("Channel",),
+    "channel_results": ("ChannelMap", "ConversionBand", "PairFlux"),
+    "curve_protocol": ("Curve", "error_bar"),
+    "ring": ("Ring",),
+    "ring_results": (
+        "DetuningMap",
+        "IntegratedDispersion",
+        "PairRates",
+        "PairTable",
+        "Resonances",
+        "RingDispersion",
+        "StimulatedIdler",
+    ),
+}
+_HOME = {name: room for room, names in _ROOMS.items() for name in names}
 
 __all__ = [
     "LASER_CAUTION",
@@ -63,3 +89,15 @@ __all__ = [
     "StimulatedIdler",
     "error_bar",
 ]
+
+
+def __getattr__(name: str) -> Any:
+    """A public name, from its room."""
+    if name not in _HOME:
+        raise AttributeError(f"module {__name__!r} has no attribute {name!r}")
+    return getattr(import_module(f"phasematch.{_HOME[name]}"), name)
+
+
+def __dir__() -> list[str]:
+    """The public names."""
+    return __all__

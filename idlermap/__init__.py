@@ -1,1 +1,0 @@
-"""The door of the command ``idlermap``; the work is in materials, modesolve and phasematch."""
