@@ -23,16 +23,15 @@ from dataclasses import dataclass
 import numpy as np
 
 from materials.common import series
-from materials.common.constants import C_UM_PER_PS
+from materials.common.constants import C_UM_PER_PS, PER_UM_TO_PER_M
 from modesolve.jets import Jet
 from modesolve.layout import Layout
 from modesolve.operators import QUARTER, Operators
 
 __all__ = ["QuarterFields", "mode_series", "quarter_fields"]
 
-#: m^2 in um^2 and 1/(W um) in 1/(W m).
+#: m^2 in um^2.
 UM2_PER_M2 = 1e12
-PER_UM_TO_PER_M = 1e6
 
 
 @dataclass(frozen=True, slots=True, eq=False)

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping, Sequence
-from dataclasses import dataclass, field, fields, replace
+from dataclasses import dataclass, fields, replace
 from typing import Any
 
 import numpy as np
@@ -13,8 +13,7 @@ from materials.common.constants import PER_UM_TO_PER_KM, omega_from_um
 from materials.common.errors import NoGuidedMode, SolverError
 from materials.common.results import (
     ErrorBars,
-    Provenance,
-    Result,
+    FullResult,
     frozen_array,
     make_provenance,
     quantity,
@@ -28,7 +27,7 @@ _AXIS = ("wavelength_um",)
 
 
 @dataclass(frozen=True, slots=True, eq=False)
-class ModeTable(Result):
+class ModeTable(FullResult):
     """The modes of a cross-section at one wavelength, highest index first."""
 
     wavelength_um: float = quantity("wavelength", "um")
@@ -43,10 +42,6 @@ class ModeTable(Result):
     beta3_ps3_per_km: np.ndarray = declared("beta3_ps3_per_km", ("mode",))
     beta4_ps4_per_km: np.ndarray = declared("beta4_ps4_per_km", ("mode",))
     te_fraction: np.ndarray = declared("te_fraction", ("mode",))
-    error: ErrorBars = field(default_factory=ErrorBars)
-    inputs: Mapping[str, Any] = field(default_factory=dict)
-    notes: tuple[str, ...] = ()
-    provenance: Provenance | None = None
 
 
 def mode_table(modes: Sequence[Mode]) -> ModeTable:
@@ -64,7 +59,7 @@ def mode_table(modes: Sequence[Mode]) -> ModeTable:
 
 
 @dataclass(frozen=True, slots=True, eq=False)
-class DispersionTable(Result):
+class DispersionTable(FullResult):
     """A dispersion curve at chosen wavelengths."""
 
     mode: str = quantity("mode", "")
@@ -80,10 +75,6 @@ class DispersionTable(Result):
     zero_dispersion_um: np.ndarray = quantity(
         "zero-dispersion wavelength", "um", ("zero_crossing",)
     )
-    error: ErrorBars = field(default_factory=ErrorBars)
-    inputs: Mapping[str, Any] = field(default_factory=dict)
-    notes: tuple[str, ...] = ()
-    provenance: Provenance | None = None
 
 
 #: Figures of a curve that become columns.
@@ -129,17 +120,13 @@ def dispersion_table(
 
 
 @dataclass(frozen=True, slots=True, eq=False)
-class BetaTable(Result):
+class BetaTable(FullResult):
     """Derivatives of beta by angular frequency about a pump."""
 
     mode: str = quantity("mode", "")
     pump_um: float = quantity("pump wavelength", "um")
     order: np.ndarray = quantity("order k of the derivative", "1", ("order",))
     beta: np.ndarray = quantity("beta_k = d^k beta/d omega^k", "ps^k/km", ("order",))
-    error: ErrorBars = field(default_factory=ErrorBars)
-    inputs: Mapping[str, Any] = field(default_factory=dict)
-    notes: tuple[str, ...] = ()
-    provenance: Provenance | None = None
 
 
 def beta_table(
@@ -176,7 +163,7 @@ def beta_table(
 
 
 @dataclass(frozen=True, slots=True, eq=False)
-class TaperTable(Result):
+class TaperTable(FullResult):
     """Effective index of one mode against core width.
 
     Where the mode is not guided, or could not be solved, the value is NaN and ``reason``
@@ -190,10 +177,6 @@ class TaperTable(Result):
     n_group: np.ndarray = declared("n_group", ("width_um",))
     effective_area_um2: np.ndarray = declared("effective_area_um2", ("width_um",))
     reason: np.ndarray = quantity("why there is no value", "", ("width_um",))
-    error: ErrorBars = field(default_factory=ErrorBars)
-    inputs: Mapping[str, Any] = field(default_factory=dict)
-    notes: tuple[str, ...] = ()
-    provenance: Provenance | None = None
 
     @property
     def failed(self) -> int:
