@@ -36,7 +36,7 @@ EXIT_CODES = (
     ExitCode(GOOD, "good"),
     ExitCode(FAULT, "our fault: a bug, or a solver that did not do its work", (SolverError,)),
     ExitCode(USAGE, "wrong usage, or problems in the design file (one line each)", (InputError,)),
-    ExitCode(FAILED_POINTS, "finished, but points inside the solved band have no value"),
+    ExitCode(FAILED_POINTS, "finished, but values that were asked for are unknown"),
     ExitCode(RANGE, "an input out of range, or no guided mode", (OutOfRange, NoGuidedMode)),
     ExitCode(
         STORAGE,

@@ -1,10 +1,11 @@
 """Why a number is missing, and which missing numbers make a run one with failed points.
 
 The solved band is the user's choice: what lies outside it has no value by design, and no
-verb counts it. Every other missing value does, whatever the verb: a mode that is not
-guided at some width, an efficiency without n2, a ring at its threshold of oscillation.
-A whole column that no medium has the data for (gamma in a list of modes) is no such point;
-a note tells of it.
+verb counts it, but for the pairs of a ring that are listed one by one (``outside_counts`` of
+a result): they were asked for. Every other missing value counts, whatever the verb: a mode
+that is not guided at some width, an efficiency without n2, a ring at its threshold of
+oscillation. A whole column that no medium has the data for (gamma in a list of modes) is no
+such point; a note tells of it.
 
 Examples
 --------
@@ -32,9 +33,14 @@ def outside_or_good(good: np.ndarray) -> np.ndarray:
 
 
 def count_failed(results: Iterable[Any]) -> int:
-    """Points of results without a value for another reason than lying outside the band.
+    """Points of results without a value that count as failed, see above.
 
     Results that have no field ``reason`` have no such points.
     """
-    reasons = (np.ravel(getattr(result, "reason", "")).tolist() for result in results)
-    return sum(bool(why) and OUTSIDE_BAND not in why for some in reasons for why in some)
+    return sum(_failed(result) for result in results)
+
+
+def _failed(result: Any) -> int:
+    all_count = getattr(result, "outside_counts", False)
+    reasons = np.ravel(getattr(result, "reason", "")).tolist()
+    return sum(bool(why) and (all_count or OUTSIDE_BAND not in why) for why in reasons)

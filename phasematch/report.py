@@ -18,19 +18,20 @@ if TYPE_CHECKING:
     from modesolve.tables import DispersionTable, ModeTable
     from phasematch.channel_results import ConversionBand, PairFlux
     from phasematch.design_tables import ChannelKeys, RingKeys
+    from phasematch.ring_results import PairTable
     from phasematch.study import Outcome, RingResults
 
 #: Width of a report, columns.
 WIDTH = 80
 
 
-def _table(title: str, *columns: str) -> Table:
+def _table(title: str, *columns: str, gap: int = 2) -> Table:
     table = Table(
         title=title,
         title_justify="left",
         title_style="bold",
         box=None,
-        padding=(0, 2, 0, 0),
+        padding=(0, gap, 0, 0),
         pad_edge=False,
     )
     for i, column in enumerate(columns):
@@ -38,7 +39,7 @@ def _table(title: str, *columns: str) -> Table:
     return table
 
 
-def _cells(result: Any, names: Iterable[str], index: int, most: int = 8) -> list[str]:
+def _cells(result: Any, names: Iterable[str], index: int, most: int = 9) -> list[str]:
     """Values of some columns of a result at one row, with their bars, ``most`` digits."""
     out = []
     for name in names:
@@ -63,7 +64,7 @@ def modes_report(result: ModeTable) -> Table:
     )  # fmt: skip
     for i, label in enumerate(result.mode):
         index = _cells(result, ["n_eff"], i, most=10)
-        table.add_row(str(label), *index, *_cells(result, names, i, most=7))
+        table.add_row(str(label), *index, *_cells(result, names, i))
     return table
 
 
@@ -76,9 +77,9 @@ def dispersion_report(result: DispersionTable, rows: int = 7) -> Group:
     names = ("n_eff", "n_group", "dispersion_ps_per_nm_km", "gamma_per_w_m")
     length = len(result.wavelength_um)
     for i in np.unique(np.linspace(0, length - 1, min(rows, length)).round().astype(int)):
-        table.add_row(f"{result.wavelength_um[i]:.4g}", *_cells(result, names, int(i), most=9))
+        table.add_row(f"{result.wavelength_um[i]:.4g}", *_cells(result, names, int(i)))
     zeros = [
-        format_number(zero, _entry(result.error.get("zero_dispersion_um"), i))
+        format_number(zero, _entry(result.error.get("zero_dispersion_um"), i), most=9)
         for i, zero in enumerate(result.zero_dispersion_um)
     ]
     line = "Zero dispersion: " + (", ".join(zeros) + " um" if zeros else "none in this band")
@@ -125,26 +126,39 @@ def ring_report(table: RingKeys, results: RingResults, rows: int = 10) -> list[A
         scalar_row(pairs, "pump_um", "pump resonance", "um"),
         scalar_row(about, "d1_ghz", "D1/2pi (free spectral range)", "GHz"),
         scalar_row(about, "d2_mhz", "D2/2pi", "MHz"),
-        ("loaded linewidth", _cells(pairs, ["linewidth_mhz"], 0, most=9)[0], "MHz"),
+        ("loaded linewidth", _linewidth(pairs), "MHz"),
         ("aligned pairs", f"{int(pairs.aligned.sum())} of {len(pairs.mu)}", aligned),
     ]
+    unknown = np.isnan(pairs.misalignment_mhz)
+    if unknown.any():
+        lines.append(("unknown pairs", str(int(unknown.sum())), in_words(pairs.mu[unknown])))
     if rates is not None:
         lines.append(("pump power in the bus", f"{rates.pump_w:g}", "W"))
     columns = ["pair", "signal um", "idler um", "misses MHz", "linewidths", "aligned"]
-    listed = _table("Pairs, cold", *columns, *(["pairs 1/s"] if rates is not None else []))
+    last = [] if rates is None else ["pairs 1/s"]
+    listed = _table("Pairs, cold", *columns, *last, gap=2 - len(last))
     for i in range(min(rows, len(pairs.mu))):
         cells = _cells(pairs, ("signal_um", "idler_um"), i, most=7)
-        cells += _cells(pairs, ("misalignment_mhz", "misalignment_linewidths"), i, most=6)
-        cells.append("yes" if pairs.aligned[i] else "no")
+        cells += _cells(pairs, ("misalignment_mhz", "misalignment_linewidths"), i)
+        cells.append("unknown" if unknown[i] else "yes" if pairs.aligned[i] else "no")
         if rates is not None:
-            cells += _cells(rates, ("coincidences_per_s",), i, most=5)
+            cells += _cells(rates, ("coincidences_per_s",), i)
         listed.add_row(str(pairs.mu[i]), *cells)
     title = (
         f"Ring, radius {table.radius_um:g} um, Q {table.q_intrinsic:g} intrinsic, "
         f"{table.q_coupling:g} coupling"
     )
-    reasons = [] if rates is None else dict.fromkeys(r for r in rates.reason[:rows] if r)
-    return [value_lines(title, lines), Group(listed, *(Text(f"none: {r}") for r in reasons))]
+    texts = [f"unknown: {r}" for r in dict.fromkeys(pairs.reason) if r]
+    if rates is not None:
+        missing = dict.fromkeys(r for r in rates.reason[:rows] if r)
+        texts += [f"none: {r}" for r in missing if r not in pairs.reason]
+    return [value_lines(title, lines), Group(listed, *map(Text, texts))]
+
+
+def _linewidth(pairs: PairTable) -> str:
+    """Loaded linewidth of the first pair that has one; it hardly changes from pair to pair."""
+    known = np.flatnonzero(np.isfinite(pairs.linewidth_mhz))
+    return _cells(pairs, ["linewidth_mhz"], int(known[0]))[0] if known.size else "unknown"
 
 
 def in_words(numbers: np.ndarray) -> str:

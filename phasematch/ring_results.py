@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from typing import ClassVar
 
 import numpy as np
 
@@ -69,6 +70,9 @@ class PairTable(FullResult):
     pump_order: int = quantity("azimuthal order of the pump", "1")
     pump_um: float = quantity("wavelength of the pump resonance", "um")
     pump_thz: float = quantity("frequency of the pump resonance", "THz")
+
+    #: Pairs are listed one by one, so one beyond the solved band counts as failed.
+    outside_counts: ClassVar[bool] = True
 
     @property
     def misalignment_error_mhz(self) -> np.ndarray:

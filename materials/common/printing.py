@@ -19,7 +19,8 @@ def format_number(value: Any, bar: float | None = None, *, digits: int = 6, most
     The bar is rounded up, to one digit, or two where it starts with a 1; one of 1 or more
     is written out behind ``+-``, and from a million on the number has a power of ten.
     Without a bar (None, 0 or NaN) ``digits`` significant digits are shown. At most
-    ``most`` digits are shown; a bar below the last of them counts as one of it.
+    ``most`` digits are shown (one more where the bar has two); where the bar is below the
+    last of them, all ``most`` stand without brackets.
 
     Examples
     --------
@@ -27,8 +28,8 @@ def format_number(value: Any, bar: float | None = None, *, digits: int = 6, most
     '1.83454380(10)'
     >>> format_number(-1234.567, 23.4)
     '-1230 +- 30'
-    >>> format_number(123456.7, 0.2, most=5)
-    '123460 +- 10'
+    >>> format_number(1.5491632345, 1e-8, most=9), format_number(1.5491632345, 9e-9, most=9)
+    ('1.549163235(10)', '1.54916323')
     >>> format_number(29667950.0, 144.0)
     '2.966795(15)e+07'
     >>> format_number(1.23456e-7, 3e-11)
@@ -42,14 +43,29 @@ def format_number(value: Any, bar: float | None = None, *, digits: int = 6, most
     if bar is None or not math.isfinite(value) or not (0 < bar < math.inf):
         return f"{value:.{digits}g}"
     last = math.floor(math.log10(abs(value))) + 1 - most if value else -308
-    units, place = (1, last) if bar <= 10.0**last else _rounded_up(bar)
+    if bar < 10.0**last * (1 - 1e-9):
+        return _digits(value, last)
+    units, place = _rounded_up(bar)
     size = max(math.floor(math.log10(abs(value))) if value else 0, place)
     shown = units * 10.0**place
     if shown >= 1 and size < 6:
         return f"{round(value, -place):.{max(0, -place)}f} +- {shown:g}"
-    if size >= 6 or (size < -3 and place < -4):  # too large or too small to write out
+    if _needs_power(size, place):
         return f"{value / 10.0**size:.{size - place}f}({units})e{size:+03d}"
     return f"{value:.{-place}f}({units})"
+
+
+def _needs_power(size: int, place: int) -> bool:
+    """Whether a number of these first and last digits is too large or small to write out."""
+    return size >= 6 or (size < -3 and place < -4)
+
+
+def _digits(value: float, place: int) -> str:
+    """All digits down to one place, zeros at the end included."""
+    size = math.floor(math.log10(abs(value)))
+    if _needs_power(size, place):
+        return f"{value:.{size - place}e}"
+    return f"{value:.{max(0, -place)}f}"
 
 
 def _rounded_up(bar: float) -> tuple[int, int]:

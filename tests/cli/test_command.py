@@ -434,7 +434,7 @@ def test_every_error_has_the_code_of_its_nearest_ancestor(idlermap, monkeypatch,
         ("run", ['cross_section.core="Nb2O5-Lemarchand2013"'], 3),
         ("ring", ['cross_section.core="Nb2O5-Lemarchand2013"'], 0),
         ("ring", ["ring.pump_w=10.0"], 3),  # far above the threshold of oscillation
-        ("ring", ["ring.pairs=500"], 0),  # most lie outside the band, by design
+        ("ring", ["ring.pairs=500"], 3),  # most lie outside the band
         ("channel", ["channel.pump_um=1.51"], 0),  # likewise the idlers of some signals
     ],
 )
@@ -479,7 +479,7 @@ class Interrupting:
         if name == "scipy":
             os.kill(os.getpid(), {int(number)})
 sys.meta_path.insert(0, Interrupting())
-from idlermap.__main__ import main
+from phasematch.__main__ import main
 main()
 """
     root = Path(phasematch.__file__).parents[1]
@@ -493,10 +493,20 @@ main()
 def test_entry_point_and_module_are_the_command(here):
     root = Path(phasematch.__file__).parents[1]
     done = subprocess.run(
-        [sys.executable, "-m", "idlermap", "--version"], capture_output=True, text=True,
+        [sys.executable, "-m", "phasematch", "--version"], capture_output=True, text=True,
         check=False, env={**os.environ, "PYTHONPATH": str(root)}, cwd=here,
     )  # fmt: skip
     assert done.returncode == 0 and done.stdout.startswith("idlermap, version ")
+
+
+def test_pairs_without_a_value_are_unknown_with_the_reason(idlermap):
+    code, out, _ = idlermap("ring", "design.toml", "--set", "ring.pump_um=1.5025")
+    assert code == 3
+    assert re.search(r"unknown pairs +\d+ +\d+ to 5$", out, re.MULTILINE)
+    assert re.search(r"^5 .* none +unknown$", out, re.MULTILINE)
+    assert "unknown: outside the solved band" in out
+    code, out, err = idlermap("ring", "design.toml", "--set", "ring.pump_w=10.0")
+    assert code == 3 and re.search(r"which pair \d+ reaches first at 0\.\d+ W", err)
 
 
 def test_a_bug_says_so(idlermap, monkeypatch):

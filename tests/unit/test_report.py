@@ -1,5 +1,7 @@
 """Reports fit 80 columns, show bars, and say "none" with the reason where nothing is."""
 
+from types import SimpleNamespace
+
 import numpy as np
 import pytest
 
@@ -8,7 +10,10 @@ from modesolve.tables import DispersionTable, ModeTable
 from phasematch import report
 from phasematch.caution import LASER_CAUTION
 from phasematch.channel_results import ConversionBand, PairFlux
-from phasematch.design_tables import ChannelKeys
+from phasematch.design_tables import ChannelKeys, RingKeys
+from phasematch.ring import Ring
+
+from ..synthetic_curve import curve, with_bars
 
 
 def mode_table():
@@ -25,7 +30,7 @@ def mode_table():
 def test_no_number_is_cut():
     text = report.as_text(report.modes_report(mode_table()))
     assert "…" not in text
-    assert "-12345.6789" in text and text.count("-12345.68") == 4
+    assert text.count("-12345.6789") == 5
     assert max(map(len, text.splitlines())) <= 80
 
 
@@ -76,3 +81,23 @@ def test_missing_edges_are_none_with_the_reason():
 
 def test_notes_once_each_and_the_caution_apart():
     assert report.notes_lines(["a", LASER_CAUTION, "b", "a"]) == ["note: a", "note: b"]
+
+
+def test_ring_table_cuts_no_number():
+    """Seven columns with the widest numbers there are; unknown pairs are told apart."""
+    ring = Ring(
+        with_bars(curve(gamma=1.0, half_band_thz=3.0), n_eff=1e-8, n_group=1e-5, beta2=0.01),
+        radius_um=115,
+        q_intrinsic=3e6,
+        q_coupling=3e6,
+    )
+    results = SimpleNamespace(
+        pairs=ring.pairs(1.55, 20),
+        dispersion=ring.dispersion_coefficients(1.55),
+        rates=ring.spontaneous(1.55, 1e-3, 20),
+    )
+    keys = RingKeys(radius_um=115, q_intrinsic=3e6, q_coupling=3e6, pump_um=1.55)
+    text = report.as_text(*report.ring_report(keys, results, rows=20))
+    assert "…" not in text and " nan" not in text
+    assert max(map(len, text.splitlines())) <= 80
+    assert "unknown pairs" in text and text.endswith("unknown: outside the solved band\n")

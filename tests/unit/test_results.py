@@ -57,7 +57,7 @@ def curve(count=3, **more):
         (np.inf, 1e-3, "inf"),
         (7, 1.0, "7"),
         ("TE0", None, "TE0"),
-        (1.0, 3e-19, "1.000000000000000(1)"),
+        (1.0, 3e-19, "1.000000000000000"),
         (29667950.0, 144.0, "2.966795(15)e+07"),
     ],
 )
@@ -66,8 +66,13 @@ def test_format_number(value, bar, text):
 
 
 def test_format_number_with_fewer_digits():
-    """The bar grows to the last digit shown, never the other way round."""
-    assert format_number(1.506530411, 1.2e-8, most=8) == "1.5065304(1)"
+    """As many as the bar allows, and no bar where it is below the last of them."""
+    assert format_number(1.506530411, 1.2e-7, most=8) == "1.50653041(12)"
+    assert format_number(1.506530411, 9.9e-8, most=8) == "1.5065304"  # never a bar too large
+    assert format_number(821630.126, 0.14, most=9) == "821630.13(14)"
+    assert format_number(8216301.26, 0.009, most=9) == "8.21630126e+06"
+    assert format_number(12345.6, 1e-9, most=4) == "12346"
+    assert format_number(2.0, 1e-15, most=9) == "2.00000000"
     assert format_number(1.506530411, 1.2e-5, most=8) == "1.506530(12)"
 
 
