@@ -23,6 +23,7 @@ from matplotlib.ticker import MaxNLocator
 from materials.common.files import whole_file
 from materials.common.results import format_number
 from phasematch.conversion import sampled_band
+from phasematch.reasons import OUTSIDE_BAND
 
 if TYPE_CHECKING:
     from modesolve import Mode
@@ -37,6 +38,7 @@ COLUMN_IN = 3.4
 BLUE, ORANGE, GREY = "#0072B2", "#D55E00", "#6E6E6E"
 COLOUR_MAP = "cividis"
 _NO_VALUE = "#E4E4E4"
+_ANOMALOUS = "#FAEBDF"  # ORANGE at 12 % on white
 
 _STYLE: Any = {
     "font.size": 8.0,
@@ -81,29 +83,43 @@ def mode_field_figure(mode: Mode) -> Figure:
     field, section = mode.fields(), mode.section
     name = "x" if mode.te_fraction >= 0.5 else "y"
     values = np.real(getattr(field, f"e_{name}"))
-    values = values * np.sign(values.flat[np.argmax(np.abs(values))])
-    index = format_number(mode.n_eff, mode.error.get("n_eff"), most=9)
+    inside = np.where(_in_core(field.x_um, field.y_um, section), values, 0.0)
+    peak = inside.flat[np.argmax(np.abs(inside))]  # walls may carry more, beside the core
+    values = values / (peak or 1.0)
+    signed = values.min() < -0.1
+    index = format_number(mode.n_eff, mode.error.get("n_eff"), most=10)
     half, low, high = _window(field.x_um, field.y_um, values, section)
-    with _figure(min(3.6, 0.75 + 2.3 * (high - low) / (2 * half))) as figure:
+    with _figure(min(3.6, 0.75 + 2.1 * (high - low) / (2 * half))) as figure:
         axes = figure.add_subplot()
         shown = axes.pcolormesh(
             field.x_um,
             field.y_um,
             values.T,
             shading="gouraud",
-            norm=Normalize(-1.0 if values.min() < -0.1 else 0.0, 1.0),
+            norm=Normalize(-1.0 if signed else 0.0, 1.0),
             rasterized=True,
         )
-        if values.min() < -0.1:
+        if signed:
             axes.contour(field.x_um, field.y_um, values.T, [0.0], colors="white", linewidths=0.5)
         _draw_section(axes, section, half)
         axes.set(xlim=(-half, half), ylim=(low, high), aspect="equal")
         axes.set(xlabel="x (µm)", ylabel="y (µm)")
         axes.set_title(f"{mode.label}, {mode.wavelength_um:.4g} µm, $n_{{\\rm eff}}$ = {index}")
-        bar = figure.colorbar(shown, ax=axes, shrink=0.8)
+        beside = axes.inset_axes((1.04, 0.0, 0.05, 1.0))  # as tall as the axes are
+        over = values.max() > 1.005, values.min() < -1.005
+        extend = {(1, 0): "max", (0, 1): "min", (1, 1): "both"}.get(over, "neither")
+        bar = figure.colorbar(shown, cax=beside, extend=extend)
         bar.ax.yaxis.set_major_locator(MaxNLocator(2))
-        bar.set_label(f"$E_{name}$ / max |E|")
+        bar.set_label(f"$E_{name}$ / its peak in the core")
     return figure
+
+
+def _in_core(x: Any, y: Any, section: Any) -> np.ndarray:
+    """Where a grid lies in the core, the film beside a rib left out."""
+    line = section.wall_line()
+    half = np.interp(y, [line.bottom_um, line.top_um], [line.half_bottom_um, line.half_top_um])
+    between = (y >= 0.0) & (y <= section.height_um)
+    return np.asarray((np.abs(x)[:, None] <= half) & between)
 
 
 def _window(x: Any, y: Any, values: Any, section: Any) -> tuple[float, float, float]:
@@ -119,24 +135,20 @@ def _window(x: Any, y: Any, values: Any, section: Any) -> tuple[float, float, fl
 
 def _draw_section(axes: Any, section: Any, half: float) -> None:
     """Outlines of the core and the flat films."""
-    slab, height = section.slab_um, section.height_um
-    slope = 1.0 / np.tan(np.radians(section.sidewall_deg))
-    lean = [
-        0.5 * section.width_um + (section.width_at - at) * (height - slab) * slope
-        for at in (0.0, 1.0)
-    ]
-    line = {"color": "white", "linewidth": 0.8}
+    line, slab, height = section.wall_line(), section.slab_um, section.height_um
+    bottom, top = line.half_bottom_um, line.half_top_um
+    style: dict[str, Any] = {"color": "white", "linewidth": 0.8}
     if slab > 0:
-        xs = [-half, -lean[0], -lean[1], lean[1], lean[0], half]
-        axes.plot(xs, [slab, slab, height, height, slab, slab], **line)
-        axes.axhline(0.0, **line)
+        xs = [-half, -bottom, -top, top, bottom, half]
+        axes.plot(xs, [slab, slab, height, height, slab, slab], **style)
+        axes.axhline(0.0, **style)
     else:
-        xs = [-lean[0], -lean[1], lean[1], lean[0], -lean[0]]
-        axes.plot(xs, [0.0, height, height, 0.0, 0.0], **line)
+        xs = [-bottom, -top, top, bottom, -bottom]
+        axes.plot(xs, [0.0, height, height, 0.0, 0.0], **style)
     below = [-float(t) for t in np.cumsum([t for _, t in section.layers_below])]
     above = [height + float(t) for t in np.cumsum([t for _, t in section.layers_above])]
     for face in [*([0.0] if below else []), *below, *above]:
-        axes.axhline(face, linestyle=":", **line)
+        axes.axhline(face, linestyle=":", **style)
 
 
 # ---------------------------------------------------------------- dispersion
@@ -157,16 +169,17 @@ def dispersion_figure(table: DispersionTable) -> Figure:
             axes.fill_between(x, values - bar, values + bar, color=BLUE, alpha=0.3, linewidth=0)
             axes.plot(x, values, color=BLUE)
             axes.set_ylabel(label)
-            axes.yaxis.set_major_locator(MaxNLocator(4))
+            axes.yaxis.set_major_locator(MaxNLocator(5, steps=[1, 2, 5, 10], min_n_ticks=3))
         last = rows[-1]
         last.axhline(0.0, color=GREY, linewidth=0.6)
         anomalous = table.dispersion_ps_per_nm_km > 0
-        if anomalous.any() and not anomalous.all():
+        if anomalous.any():
             last.fill_between(
                 x, 0, 1, where=anomalous, transform=last.get_xaxis_transform(),
-                color=ORANGE, alpha=0.12, linewidth=0, label="anomalous",
+                color=_ANOMALOUS, linewidth=0, zorder=0, label="anomalous",
             )  # fmt: skip
-            last.legend(loc="lower right")
+            # above the panel, where no curve runs
+            last.legend(loc="lower left", bbox_to_anchor=(0.0, 1.0), borderaxespad=0.2)
         slope = np.gradient(table.dispersion_ps_per_nm_km, x)
         bars = np.broadcast_to(
             table.error.get("zero_dispersion_um", np.nan), np.shape(table.zero_dispersion_um)
@@ -209,9 +222,14 @@ def channel_map_figure(result: ChannelMap, *, span_db: float = 40.0) -> Figure:
         bar = figure.colorbar(shown, ax=axes, extend="min")
         bar.set_label("idler out / signal in (dB)")
         if known.size < values.size:
-            axes.plot([], [], "s", color=_NO_VALUE, label="outside the solved band")
-            axes.legend(loc="upper left", bbox_to_anchor=(0.0, -0.2), borderpad=0.0)
+            _name_grey(axes)
     return figure
+
+
+def _name_grey(axes: Any) -> None:
+    """Say below a map what its grey means."""
+    axes.plot([], [], "s", color=_NO_VALUE, label=OUTSIDE_BAND)
+    axes.legend(loc="upper left", bbox_to_anchor=(0.0, -0.2), borderpad=0.0)
 
 
 def _channel_title(result: ChannelMap) -> str:
@@ -248,11 +266,15 @@ def ring_figure(pairs: PairTable) -> Figure:
         known = np.isfinite(width)
         across = np.array([ends[0], *pairs.mu, ends[1]])
         # held constant beyond the first and last pair, so that the band spans the axes
-        band = np.interp(across, pairs.mu[known], width[known]) if known.any() else 0.0 * across
-        axes.fill_between(
-            across, -band, band, color=GREY, alpha=0.25, linewidth=0,
-            label="within a linewidth",
-        )  # fmt: skip
+        if known.any():
+            band = np.interp(across, pairs.mu[known], width[known])
+            axes.fill_between(
+                across, -band, band, color=GREY, alpha=0.25, linewidth=0,
+                label="within a linewidth",
+            )  # fmt: skip
+        else:
+            said = f"no pair has a value:\n{pairs.reason[0]}"
+            axes.text(0.5, 0.7, said, transform=axes.transAxes, ha="center", va="center")
         axes.axhline(0.0, color=GREY, linewidth=0.6)
         style: dict[str, Any] = {
             "fmt": "o",
@@ -276,7 +298,8 @@ def ring_figure(pairs: PairTable) -> Figure:
         pump = format_number(float(pairs.pump_um), pairs.error.get("pump_um"), digits=5, most=9)
         axes.set_title(f"pump {pump} µm")
         upwards = np.nanmax(miss, initial=0.0) >= -np.nanmin(miss, initial=0.0)
-        axes.legend(loc="lower right" if upwards else "upper right")
+        if known.any():
+            axes.legend(loc="lower right" if upwards else "upper right")
     return figure
 
 
@@ -301,20 +324,48 @@ def detuning_figure(result: DetuningMap) -> Figure:
     with _figure(2.7) as figure:
         axes = figure.add_subplot()
         axes.set_facecolor(_NO_VALUE)
+        norm = SymLogNorm(unit, linscale=1.0, vmin=-reach, vmax=reach)
         shown = axes.pcolormesh(
             result.mu,
             result.pump_um,
             np.ma.masked_invalid(miss),
-            norm=SymLogNorm(unit, linscale=1.0, vmin=-reach, vmax=reach),
+            norm=norm,
             shading="nearest",
             rasterized=True,
         )
+        limits = axes.axis()
         if min(miss.shape) > 1:
-            within = np.where(result.aligned, 1.0, 0.0)
-            axes.contour(result.mu, result.pump_um, within, [0.5], colors="white", linewidths=0.8)
+            # masked, so that no line runs along the edge of what is known
+            widths = np.ma.masked_invalid(np.abs(result.misalignment_linewidths))
+            axes.contour(result.mu, result.pump_um, widths, [1.0], colors="white", linewidths=0.8)
+        axes.axis(limits)
         axes.set(xlabel="pair index µ", ylabel="pump resonance (µm)")
-        axes.set_title("line: within a linewidth")
+        axes.set_title("line: a linewidth; within it towards 0 MHz")
         axes.xaxis.set_major_locator(MaxNLocator(6, integer=True))
         bar = figure.colorbar(shown, ax=axes)
+        ticks = _decades(norm, reach)
+        bar.set_ticks(ticks, labels=[_power_of_ten(tick) for tick in ticks])
+        bar.minorticks_off()
         bar.set_label("misalignment (MHz)")
+        if not np.isfinite(miss).all():
+            _name_grey(axes)
     return figure
+
+
+def _decades(norm: Any, reach: float) -> list[float]:
+    """Zero and the powers of ten, of either sign, that a colour bar has room for."""
+    ticks, above = [], 1.5
+    power = 10.0 ** np.floor(np.log10(reach))
+    while norm(power) - norm(0.0) > 0.06:
+        if above - norm(power) > 0.06:
+            ticks.append(float(power))
+            above = norm(power)
+        power /= 10.0
+    return [-tick for tick in ticks] + [0.0] + ticks[::-1]
+
+
+def _power_of_ten(value: float) -> str:
+    if value == 0.0:
+        return "0"
+    sign = "-" if value < 0 else ""
+    return f"${sign}10^{{{round(np.log10(abs(value)))}}}$"

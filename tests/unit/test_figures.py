@@ -10,6 +10,7 @@ from PIL import Image
 
 from materials.common.errors import StorageError
 from materials.common.results import ErrorBars
+from modesolve import CrossSection
 from modesolve.tables import DispersionTable
 from phasematch import figures
 from phasematch.channel_results import ChannelMap
@@ -88,9 +89,10 @@ def mode(te_fraction=0.99, odd=False, slab_um=0.0):
     if odd:
         shape = shape * x[:, None]
     field = SimpleNamespace(x_um=x, y_um=y, e_x=shape, e_y=shape, e_z=1j * shape)
-    section = SimpleNamespace(
+    section = CrossSection(
+        core="Si3N4-Luke2015", cladding="SiO2-Malitson1965", substrate="SiO2-Malitson1965",
         width_um=1.6, height_um=0.8, slab_um=slab_um, sidewall_deg=80.0, width_at=1.0,
-        layers_below=(("film", 0.3), ("film", 0.2)), layers_above=(),
+        layers_below=(("air", 0.3), ("air", 0.2)),
     )  # fmt: skip
     return SimpleNamespace(
         te_fraction=te_fraction, fields=lambda: field, section=section, label="TE0",
@@ -113,7 +115,7 @@ def test_size_and_units(name):
     figure = ALL[name]()
     assert figure.get_size_inches()[0] == figures.COLUMN_IN == 3.4
     labels = [axes.get_xlabel() for axes in figure.axes] + [a.get_ylabel() for a in figure.axes]
-    pure = ("pair index µ", "$n_{\\rm eff}$", "$n_{\\rm g}$", "$E_x$ / max |E|", "")
+    pure = ("pair index µ", "$n_{\\rm eff}$", "$n_{\\rm g}$", "$E_x$ / its peak in the core", "")
     for label in labels:
         assert label in pure or label.endswith(")"), label
     for axes in figure.axes:
@@ -132,6 +134,34 @@ def test_dispersion_shows_zero_bars_and_anomalous_band():
     at = np.abs(band[:, 0] - 1.2) < 1e-9
     assert np.ptp(band[at, 1]) == pytest.approx(0.02)  # twice the bar of 0.01
     assert [t.get_text() for t in panel.get_legend().get_texts()] == ["anomalous"]
+    (patch,) = panel.get_legend().get_patches()
+    shade = panel.collections[-1].get_facecolor()[0]
+    np.testing.assert_allclose(patch.get_facecolor(), shade)
+    figure.canvas.draw()
+    legend, frame = panel.get_legend().get_window_extent(), panel.get_window_extent()
+    assert legend.y0 >= frame.y1 - 1  # above the panel: no curve crosses it
+    plain = dispersion_table()
+    everywhere = replace(plain, dispersion_ps_per_nm_km=np.full(81, 5.0))
+    assert figures.dispersion_figure(everywhere).axes[-1].get_legend() is not None
+
+
+def test_mode_is_scaled_to_its_peak_in_the_core_and_the_bar_is_as_tall_as_the_axes():
+    strong = mode()
+    field = strong.fields()
+    outside = np.abs(field.x_um) > 1.2
+    e_x = np.where(outside[:, None], 3.0, 0.5 * field.e_x)
+    strong.fields = lambda: SimpleNamespace(**{**vars(field), "e_x": e_x})
+    figure = figures.mode_field_figure(strong)
+    axes = figure.axes[0]
+    drawn = axes.collections[0].get_array().reshape(39, 41).T
+    x, y = np.abs(field.x_um)[:, None], field.y_um
+    core = (x <= 0.8) & (y >= 0.0) & (y <= 0.8)
+    assert drawn[core].max() == pytest.approx(1.0) and drawn.max() > 5.0
+    plain = ALL["mode"]()  # where the bar has no arrow
+    axes, bar = plain.axes[0], plain.axes[0].child_axes[0]
+    plain.canvas.draw()
+    heights = [a.get_window_extent().height for a in (axes, bar)]
+    assert heights[0] == pytest.approx(heights[1], rel=1e-3)
 
 
 def test_channel_map_marks_3_db_of_each_pump_and_what_is_missing():
@@ -171,6 +201,42 @@ def test_ring_shows_bars_linewidth_and_alignment(sign):
     assert (band.min(), band.max()) == axes.get_xlim()
     bottom, top = axes.get_ylim()
     assert bottom < -200.0 and top > 200.0 and max(abs(bottom), abs(top)) > 800.0
+
+
+def test_ring_without_a_known_pair_says_why():
+    nothing = np.full(20, np.nan)
+    lost = replace(
+        pair_table(),
+        misalignment_mhz=nothing,
+        linewidth_mhz=nothing,
+        aligned=np.zeros(20, bool),
+        reason=np.full(20, "outside the solved band"),
+    )
+    axes = figures.ring_figure(lost).axes[0]
+    (said,) = axes.texts
+    assert said.get_text() == "no pair has a value:\noutside the solved band"
+    assert axes.get_legend() is None
+
+
+def test_detuning_line_keeps_off_the_edge_of_the_band_and_grey_is_named():
+    table = detuning_map()
+    assert ALL["detuning"]().axes[0].get_legend() is None
+    miss = table.misalignment_mhz.copy()
+    miss[:, 20:] = np.nan  # ends where every pump of a small misalignment is still aligned
+    linewidths = miss / table.linewidth_mhz
+    figure = figures.detuning_figure(
+        replace(table, misalignment_mhz=miss, misalignment_linewidths=linewidths)
+    )
+    axes = figure.axes[0]
+    assert [t.get_text() for t in axes.get_legend().get_texts()] == ["outside the solved band"]
+    (line,) = [c for c in axes.collections if hasattr(c, "levels")]
+    points = np.concatenate([path.vertices for path in line.get_paths()])
+    spread = np.interp(points[:, 1], table.pump_um, np.linspace(-1.0, 1.0, 11))
+    # on the line |miss| is a linewidth, 200 MHz; interpolation between rows is coarse
+    ratio = np.abs(spread) * points[:, 0] ** 2 * 5.0 / 200.0
+    assert np.all(np.abs(ratio - 1.0) < 0.3)
+    labels = [t.get_text() for t in figure.axes[1].get_yticklabels()]
+    assert labels == ["$-10^{3}$", "$-10^{2}$", "0", "$10^{2}$", "$10^{3}$"]
 
 
 def test_signed_maps_have_zero_in_the_middle():
