@@ -53,7 +53,7 @@ class Channel:
         For a length that is not positive or a negative loss.
     """
 
-    curve: Curve
+    curve: Curve = field(repr=False)
     length_mm: float = field(kw_only=True)
     loss_db_per_cm: float = field(kw_only=True, default=0.0)
 
@@ -98,7 +98,7 @@ class Channel:
         OutOfRange
             For wavelengths that are not positive or powers that are negative or not finite.
         """
-        return self._waves(pump_um, signal_um, pump_w).kappa_per_m[()]
+        return inputs.scalar_or_array(self._waves(pump_um, signal_um, pump_w).kappa_per_m)
 
     def signal_gain(self, pump_um: Any, signal_um: Any, pump_w: Any) -> Any:
         """Signal power out over signal power in (a ratio, not dB).
@@ -108,7 +108,7 @@ class Channel:
         """
         waves = self._waves(pump_um, signal_um, pump_w)
         passed = math.exp(-self.loss_per_m * self.length_m)
-        return (passed + photons(waves, self.loss_per_m, self.length_m))[()]
+        return inputs.scalar_or_array(passed + photons(waves, self.loss_per_m, self.length_m))
 
     def idler_efficiency(self, pump_um: Any, signal_um: Any, pump_w: Any) -> Any:
         """Idler power out over signal power in (a ratio, not dB).
@@ -124,7 +124,8 @@ class Channel:
         which holds for a weak pump, gamma P L well below 1, and equal loss.
         """
         waves = self._waves(pump_um, signal_um, pump_w)
-        return (waves.idler / waves.signal * photons(waves, self.loss_per_m, self.length_m))[()]
+        made = photons(waves, self.loss_per_m, self.length_m)
+        return inputs.scalar_or_array(waves.idler / waves.signal * made)
 
     def low_gain_efficiency(self, pump_um: Any, signal_um: Any, pump_w: Any) -> Any:
         """Idler power out over signal power in to lowest order in the pump power.
@@ -133,9 +134,8 @@ class Channel:
         `idler_efficiency` with it. Parameters and Raises as for `mismatch_per_m`.
         """
         waves = self._waves(pump_um, signal_um, pump_w)
-        return (
-            waves.idler / waves.signal * weak(waves, self.loss_per_m, self.length_m).stimulated
-        )[()]
+        made = weak(waves, self.loss_per_m, self.length_m).stimulated
+        return inputs.scalar_or_array(waves.idler / waves.signal * made)
 
     def pair_flux_density(
         self, pump_um: Any, signal_um: Any, pump_w: Any, *, counted: str = "coincidences"
@@ -156,9 +156,8 @@ class Channel:
             As for `mismatch_per_m`; or for another word in ``counted``.
         """
         _check_counted(counted)
-        return density(
-            self._waves(pump_um, signal_um, pump_w), self.loss_per_m, self.length_m, counted
-        )[()]
+        waves = self._waves(pump_um, signal_um, pump_w)
+        return inputs.scalar_or_array(density(waves, self.loss_per_m, self.length_m, counted))
 
     def pair_flux_per_s(
         self,
@@ -171,7 +170,8 @@ class Channel:
     ) -> Any:
         """Spontaneous photon pairs per second, exact dispersion; see `pair_flux`.
 
-        ``pump_um`` and ``pump_w`` broadcast; scalars in, a scalar out.
+        ``pump_um`` and ``pump_w`` broadcast; scalars in, a scalar out. NaN where there is no
+        value; `pair_flux` says why.
         """
         pumps, powers = np.broadcast_arrays(
             inputs.numbers("pump_um", pump_um, "um"),
@@ -182,7 +182,7 @@ class Channel:
         for index in np.ndindex(pumps.shape):
             span = self._range(float(pumps[index]), signal_band_um, idler_band_um)
             out[index] = self._flux(float(pumps[index]), float(powers[index]), span, counted)[0]
-        return out[()]
+        return inputs.scalar_or_array(out)
 
     def pair_flux(
         self,
@@ -326,7 +326,9 @@ class Channel:
             reason=frozen_array(reasons(self.curve, waves)),
             pump_w=pump_w,
             error=ErrorBars(bars),
-            **self._about(self.validity_notes(pumps, pump_w)),
+            **self._about(
+                self.validity_notes(pumps, pump_w) + self._fringes(values["mismatch_per_m"])
+            ),
         )
 
     def validity_notes(self, pump_um: Any, pump_w: Any) -> tuple[str, ...]:
@@ -346,6 +348,22 @@ class Channel:
         return (*notes, *power_notes(self.curve))
 
     # ------------------------------------------------------------ the work
+
+    def _fringes(self, mismatch_per_m: np.ndarray) -> tuple[str, ...]:
+        """A note where the fringes of a map, pi of kappa L/2 apart, are finer than its grid."""
+        steps = [
+            0.5 * self.length_m * np.abs(np.diff(mismatch_per_m, axis=axis)) / math.pi
+            for axis in (0, 1)
+        ]
+        finest = max((float(np.nanmax(s, initial=0.0)) for s in steps), default=0.0)
+        if finest <= 0.5:
+            return ()
+        fine = np.concatenate([(s > 0.5)[np.isfinite(s)] for s in steps])
+        return (
+            f"fringes are finer than the grid in {100 * np.mean(fine):.2g} % of the map: points "
+            "there are right, the pattern between them is not; about "
+            f"{2 * finest:.2g} times as many points along each axis show it",
+        )
 
     def _on(self, curve: Curve) -> Channel:
         return replace(self, curve=curve)

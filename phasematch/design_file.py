@@ -182,7 +182,20 @@ def _problem(source: str, error: Any) -> str:
         key = _path(where[:-1])  # a list that is too short
     if len(where) == 1:
         return f"{source}: {key} = {_shown(value)}: must be a table [{key}]; {_purpose(table)}"
-    return f"{source}: {key} = {_shown(value)}: must be {_allowed(table, where)}"
+    hint = _in_nanometres(table, where, value)
+    return f"{source}: {key} = {_shown(value)}: must be {_allowed(table, where)}{hint}"
+
+
+def _in_nanometres(table: type[Table] | None, where: Sequence[Any], value: Any) -> str:
+    """A word on a length that would be allowed if it were in nm, "" for any other."""
+    field = table.model_fields.get(str(where[1])) if table else None
+    if field is None or len(where) != 2 or not str(where[1]).endswith("_um"):
+        return ""
+    if isinstance(value, bool) or not isinstance(value, int | float) or value < 100.0:
+        return ""
+    low = next((m.ge for m in field.metadata if hasattr(m, "ge")), 0.0)
+    high = next((m.le for m in field.metadata if hasattr(m, "le")), 0.0)
+    return f" (nm? {value:g} nm are {1e-3 * value:g} um)" if low <= 1e-3 * value <= high else ""
 
 
 def _path(where: Sequence[Any]) -> str:

@@ -67,7 +67,7 @@ class Ring:
         For values that are not positive and finite.
     """
 
-    curve: Curve
+    curve: Curve = field(repr=False)
     radius_um: float = field(kw_only=True)
     q_intrinsic: float = field(kw_only=True)
     q_coupling: float = field(kw_only=True)
@@ -111,12 +111,12 @@ class Ring:
     def fsr_ghz(self, wavelength_um: Any) -> Any:
         """Free spectral range c/(n_g L), GHz; raises `OutOfRange` outside the band."""
         n_group = np.asarray(self.curve.n_group(wavelength_um))
-        return (1e3 * C_UM_PER_PS / (n_group * self.length_um))[()]
+        return inputs.scalar_or_array(1e3 * C_UM_PER_PS / (n_group * self.length_um))
 
     def linewidth_mhz(self, wavelength_um: Any) -> Any:
         """Loaded linewidth, full width at half maximum, MHz."""
         omega = omega_from_um(inputs.numbers("wavelength_um", wavelength_um, "um"))
-        return (omega / self.q_loaded * RAD_PER_PS_TO_MHZ)[()]
+        return inputs.scalar_or_array(omega / self.q_loaded * RAD_PER_PS_TO_MHZ)
 
     def finesse(self, wavelength_um: Any) -> Any:
         """Free spectral range over linewidth."""
@@ -128,7 +128,9 @@ class Ring:
         detuning = np.asarray(detuning_mhz, dtype=float) / RAD_PER_PS_TO_MHZ
         n_group = np.asarray(self.curve.n_group(wavelength_um))
         width, coupling = omega / self.q_loaded, omega / self.q_coupling
-        return cavity.build_up(n_group, self.length_um, width, coupling, detuning)[()]
+        return inputs.scalar_or_array(
+            cavity.build_up(n_group, self.length_um, width, coupling, detuning)
+        )
 
     # ------------------------------------------------------------ cold resonances
 

@@ -58,6 +58,17 @@ def numbers(name: str, value: Any, unit: str, *, zero_allowed: bool = False) -> 
     return out
 
 
+def scalar_or_array(values: Any) -> Any:
+    """A plain float where there is one number, the array where there are more.
+
+    Examples
+    --------
+    >>> scalar_or_array(np.float64(0.5))
+    0.5
+    """
+    return float(values) if np.ndim(values) == 0 else np.asarray(values)
+
+
 def whole(name: str, value: Any, *, least: int = 1, most: int = 1_000_000) -> int:
     """A whole number within bounds.
 

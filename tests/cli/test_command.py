@@ -395,6 +395,18 @@ def test_a_bad_design_is_listed_line_by_line(idlermap):
     assert idlermap("check", "none.toml", "design.toml")[:2] == (5, "design.toml: good\n")
 
 
+def test_lengths_in_nanometres_are_guessed(idlermap):
+    Path("nm.toml").write_text(
+        DESIGN.replace("width_um = 1.6", "width_um = 1600").replace(
+            "from_um = 1.5", "from_um = 1500"
+        )
+    )
+    lines = idlermap("check", "nm.toml")[2].splitlines()
+    assert lines[0].endswith("to 100 um (nm? 1600 nm are 1.6 um)")
+    assert lines[1].startswith("nm.toml: band.from_um = 1500: must be")
+    assert lines[1].endswith("(nm? 1500 nm are 1.5 um)")
+
+
 def test_missing_table_for_a_verb(idlermap):
     Path("bare.toml").write_text(DESIGN.split("[channel]")[0])
     for verb in ("channel", "ring"):

@@ -28,11 +28,12 @@ def channel():
 
 def test_scalars_in_scalars_out_and_arrays_broadcast(channel):
     for method in (channel.mismatch_per_m, channel.idler_efficiency, channel.signal_gain):
-        assert isinstance(method(1.55, 1.5, 0.1), float)
+        assert type(method(1.55, 1.5, 0.1)) is float
         table = method(np.linspace(1.5, 1.6, 3)[:, None], np.linspace(1.4, 1.5, 4), 0.1)
         assert table.shape == (3, 4)
         assert table[1, 2] == method(1.55, np.linspace(1.4, 1.5, 4)[2], 0.1)
-    assert isinstance(channel.pair_flux_per_s(1.55, 0.1), float)
+    assert type(channel.pair_flux_per_s(1.55, 0.1)) is float
+    assert repr(channel) == "Channel(length_mm=20.0, loss_db_per_cm=0.0)"
     assert channel.pair_flux_per_s([1.54, 1.55], [[0.1], [0.2], [0.3]]).shape == (3, 2)
 
 
@@ -149,6 +150,19 @@ def test_map_agrees_with_the_methods_and_carries_bars():
     assert not table.mismatch_per_m.flags.writeable
     with pytest.raises(dataclasses.FrozenInstanceError):
         table.pump_w = 1.0
+
+
+def test_a_map_too_coarse_for_its_fringes_says_so():
+    c = Channel(curve(beta2=-100.0, beta4=0.0), length_mm=20)
+    fine = c.map([1.55], np.linspace(1.53, 1.57, 201), 0.1)
+    assert not any("fringes" in note for note in fine.notes)
+    coarse = c.map([1.55], np.linspace(1.3, 1.9, 11), 0.1)
+    (said,) = [note for note in coarse.notes if "fringes" in note]
+    factor = float(said.split("; about ")[1].split()[0])
+    assert 2.0 < factor < 100.0
+    points = int(11 * factor * 2.0) + 1  # the steepest of the coarse grid is a mean over a step
+    again = c.map([1.55], np.linspace(1.3, 1.9, points), 0.1)
+    assert not any("fringes" in note for note in again.notes)
 
 
 def test_map_of_enormous_gain_stays_finite():

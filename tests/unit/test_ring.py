@@ -165,8 +165,9 @@ def test_integrated_dispersion_holds_the_misalignment_as_its_even_part():
 def test_numbers_of_a_ring_scalars_in_scalars_out():
     ring = nitride()
     for method in (ring.fsr_ghz, ring.linewidth_mhz, ring.finesse, ring.build_up):
-        assert isinstance(method(1.55), float)
+        assert type(method(1.55)) is float
         assert method(np.array([1.5, 1.55])).shape == (2,)
+    assert repr(ring) == "Ring(radius_um=100.0, q_intrinsic=2000000.0, q_coupling=2000000.0)"
     assert ring.q_loaded == 1e6 and ring.escape_fraction == 0.5
     assert ring.finesse(1.55) == pytest.approx(1e3 * ring.fsr_ghz(1.55) / ring.linewidth_mhz(1.55))
     half = 0.5 * ring.linewidth_mhz(1.55)
