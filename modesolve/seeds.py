@@ -46,8 +46,8 @@ ABSORBERS = ((15.0, 0.6, 4.0), (30.0, 0.3, 2.0))
 INWARD_SHARE = 0.8
 
 #: Modes sought near the shift and Krylov basis, widened until the mode is recognised. The
-#: shift is so close that the first search takes nine solves.
-SEARCHES = ((1, 8), (4, 20), (16, 40))
+#: shift is so close that the first search takes seven solves.
+SEARCHES = ((1, 6), (4, 20), (16, 40))
 
 #: A shift lies this factor above the eigenvalue expected.
 ABOVE = 1.0 + 1e-4
