@@ -22,7 +22,7 @@ The rooms are in the order of the work::
     ring            `Ring`; ring_power: with light in it
     reasons, caution
                     why numbers are missing; what goes with pump powers
-    design_*, starter, study
+    design_*, starter, outputs, study
                     design files and their running
     report, figures, exit_codes, cli*
                     the command
