@@ -28,8 +28,8 @@ def format_number(value: Any, bar: float | None = None, *, digits: int = 6, most
     '1.83454380(10)'
     >>> format_number(-1234.567, 23.4)
     '-1230 +- 30'
-    >>> format_number(1.5491632345, 1e-8, most=9), format_number(1.5491632345, 9e-9, most=9)
-    ('1.549163235(10)', '1.54916323')
+    >>> format_number(1.54916323, 1e-8, most=9), format_number(1.54916323, 9e-9, most=9)
+    ('1.549163230(10)', '1.54916323')
     >>> format_number(29667950.0, 144.0)
     '2.966795(15)e+07'
     >>> format_number(1.23456e-7, 3e-11)
