@@ -77,7 +77,7 @@ def dispersion_report(result: DispersionTable, rows: int = 7) -> Group:
     names = ("n_eff", "n_group", "dispersion_ps_per_nm_km", "gamma_per_w_m")
     length = len(result.wavelength_um)
     for i in np.unique(np.linspace(0, length - 1, min(rows, length)).round().astype(int)):
-        table.add_row(f"{result.wavelength_um[i]:.4g}", *_cells(result, names, int(i)))
+        table.add_row(f"{result.wavelength_um[i]:.4g}", *_cells(result, names, int(i), most=10))
     zeros = [
         format_number(zero, _entry(result.error.get("zero_dispersion_um"), i), most=9)
         for i, zero in enumerate(result.zero_dispersion_um)
