@@ -6,7 +6,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from materials.common.results import Result, frozen_array, quantity
+from materials.common.results import FullResult, frozen_array, quantity
 from modesolve.integrals import quarter_fields
 from modesolve.jets import Jet
 from modesolve.layout import Layout
@@ -19,7 +19,7 @@ COLUMNS = 401
 
 
 @dataclass(frozen=True, slots=True, eq=False, repr=False, kw_only=True)
-class FieldMap(Result):
+class FieldMap(FullResult):
     """Electric field on cell centres, scaled so that the largest |E| is 1.
 
     In a lossless guide the transverse components are real and E_z is imaginary.

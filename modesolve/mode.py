@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from functools import partial
 from typing import Any
 
@@ -91,7 +91,12 @@ class Mode(Result):
 
     def fields(self) -> FieldMap:
         """Electric field over the whole section, on the cell centres of the finest grid."""
-        return self.field_map
+        about: dict[str, Any] = {
+            "inputs": self.inputs,
+            "notes": self.notes,
+            "provenance": self.provenance,
+        }
+        return replace(self.field_map, **about)
 
 
 def solve_modes(

@@ -207,7 +207,9 @@ def _path(where: Sequence[Any]) -> str:
 
 
 def _purpose(table: type[Table] | None) -> str:
-    return (table.__doc__ or "").strip() if table else ""
+    """What a table is for: the first sentence about it, as the end of a line."""
+    about = (table.__doc__ or "").strip().partition(". ")[0].rstrip(".") if table else ""
+    return about[:1].lower() + about[1:]
 
 
 def _allowed(table: type[Table] | None, where: Sequence[Any]) -> str:

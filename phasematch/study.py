@@ -34,6 +34,7 @@ from phasematch.caution import LASER_CAUTION
 from phasematch.channel import Channel
 from phasematch.channel_results import ChannelMap, ConversionBand, PairFlux
 from phasematch.design_file import Design
+from phasematch.outputs import check_output
 from phasematch.ring import Ring
 from phasematch.ring_results import DetuningMap, PairRates, PairTable, RingDispersion
 
@@ -158,8 +159,13 @@ def _solve_curve(design: Design, section: CrossSection, progress: Progress) -> D
 def curve_table(design: Design, curve: DispersionCurve) -> DispersionTable:
     """The curve at as many wavelengths as the design asks for."""
     band = design.tables.band
-    wavelengths = np.linspace(band.from_um, band.to_um, band.points)
-    return dispersion_table(curve, wavelengths, design.as_dict())
+    return dispersion_table(curve, _axis(band.from_um, band.to_um, band.points), design.as_dict())
+
+
+def _axis(start: float, stop: float, points: int) -> np.ndarray:
+    """Evenly spaced points of 12 digits, so that files hold 1.897 and not 1.8969999999999998."""
+    between = [float(f"{x:.12g}") for x in np.linspace(start, stop, points)[1:-1]]
+    return np.array([start, *between, stop])
 
 
 def solve_channel(design: Design, curve: DispersionCurve) -> ChannelResults:
@@ -168,8 +174,8 @@ def solve_channel(design: Design, curve: DispersionCurve) -> ChannelResults:
     if table is None or table.map_pump_um is None or table.map_signal_um is None:
         raise missing_table(design, "channel")
     channel = Channel(curve, length_mm=table.length_mm, loss_db_per_cm=table.loss_db_per_cm)
-    pumps = np.linspace(*table.map_pump_um, table.map_points)
-    signals = np.linspace(*table.map_signal_um, table.map_points)
+    pumps = _axis(*table.map_pump_um, table.map_points)
+    signals = _axis(*table.map_signal_um, table.map_points)
     return ChannelResults(
         map=_of(design, channel.map(pumps, signals, table.pump_w)),
         band=_of(design, channel.conversion_band(table.pump_um, table.pump_w)),
@@ -284,6 +290,7 @@ def run_design(
     NoGuidedMode, SolverError
         As `solve_design`.
     """
+    check_output(design, folder, replace=replace)
     with whole_folder(folder, replace=replace) as staging:
         outcome = solve_design(design, progress)
         progress("tables")

@@ -113,7 +113,7 @@ def problems(raw):
             {"band__to_um": 6.0},
             ["band.to_um = 6: outside the range of Si3N4-Luke2015, 0.31 to 5.504 um"],
         ),
-        ({"band": None}, ["my.toml: [band]: this table is missing; The wavelengths"]),
+        ({"band": None}, ["my.toml: [band]: this table is missing; the wavelengths"]),
         ({"band": 3}, ["my.toml: band = 3: must be a table [band]"]),
         ({"rnig": {}}, ["my.toml: rnig = {...}: no such table; did you mean ring?"]),
         ({"mode__label": "HE11"}, ['mode.label = "HE11": must be a mode label such as "TE0"']),
