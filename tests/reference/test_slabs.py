@@ -179,7 +179,7 @@ def test_areas_and_weights_of_slabs(d, nf, mode, a_int, a_s, a_gamma, a_clad, co
         values["weight_0"][0],
         values["weight_1"][0],
     ]
-    # 1e-5 is asked for; the ladder gives about 1e-7
+    # the ladder gives about 3e-7; ten printed digits of the reference do not limit
     np.testing.assert_allclose(found, [a_int, a_s, a_gamma, a_clad, core, clad], rtol=1e-6)
     k0 = omega / C_UM_PER_PS
     gamma = k0 * 1e-19 * 1e12 / (a_gamma * width) * 1e6
