@@ -92,19 +92,6 @@ def problems(raw):
             ['cross_section.layers_below[2][1] = "gold": no medium'],
         ),
         (
-            {"cross_section__sidewall_deg": 119.0, "cross_section__width_um": 0.5},
-            ["my.toml: cross_section.sidewall_deg = 119", "is -0.3869 um wide at its narrow end"],
-        ),
-        ({"cross_section__sidewall_deg": 45}, ["= 45: must be a number from 60 to 120 degrees"]),
-        (
-            {"cross_section__bend_radius_um": 0.5},
-            ["my.toml: cross_section.bend_radius_um = 0.5 um: allowed", "clear the bend's axis"],
-        ),
-        (
-            {"cross_section__temperature_degc": 30.0, "cross_section__core": "As2S3-Rodney1958"},
-            ["my.toml: cross_section: As2S3-Rodney1958 has no dn/dT"],
-        ),
-        (
             {"cross_section__layers_below": [["SiO2-Malitson1965", 0.0]]},
             ["cross_section.layers_below[1][2] = 0.0: must be pairs [material key, thickness"],
         ),
